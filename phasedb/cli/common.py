@@ -1,0 +1,41 @@
+"""What commands share: the JSON switch, printing, and the store named by the options."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from phasedb.cli import Settings
+
+if TYPE_CHECKING:
+    from phasedb.library import Library
+
+_Command = TypeVar("_Command", bound=Callable[..., Any])
+
+
+def json_option(command: _Command) -> _Command:
+    """Add ``--json``."""
+    return click.option("--json", "as_json", is_flag=True, help="Print JSON.")(command)
+
+
+def print_json(document: dict[str, Any]) -> None:
+    """Print one JSON document on stdout; NaN is a bug, so it is refused here."""
+    click.echo(json.dumps(document, allow_nan=False, ensure_ascii=False, indent=1))
+
+
+def note(text: str) -> None:
+    """Print a remark on stderr: stdout carries only the result."""
+    click.echo(text, err=True)
+
+
+def open_library(ctx: click.Context, *, write: bool = False) -> Library:
+    """Open the library that ``--store`` names, acting as ``--by``; closed when the command ends."""
+    from phasedb.library import Library
+
+    settings: Settings = ctx.find_root().obj
+    library = Library.open(settings.store, by=settings.by, write=write)
+    ctx.call_on_close(library.close)
+    return library
