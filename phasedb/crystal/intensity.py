@@ -37,7 +37,7 @@ TWO_THETA_SCALE_DEG: Final = 160.0
 class _Reflections:
     """One hkl for each set of equivalents, ascending in N.
 
-    hkl (n_reflections, 3); multiplicity (n_reflections,); n (n_lines,), distinct N; line (n_reflections,), the
+    hkl (n_reflections, 3); multiplicity (n_reflections,); n (n_lines,), distinct N; line (n_reflections,),
     index into n.
     """
 
@@ -137,7 +137,7 @@ def form_factor(symbol: str, s_per_angstrom: ArrayLike, *, probe: str = "xray") 
 
     References
     ----------
-    International Tables for Crystallography Vol. C, tables 6.1.1.4 (X-ray) and 4.3.2.2 (electron), from gemmi.
+    International Tables for Crystallography Vol. C, tables 6.1.1.4 (X-ray), 4.3.2.2 (electron), from gemmi.
     """
     heights, widths, constant, _ = _coefficients(symbol, probe)
     s2 = np.square(np.asarray(s_per_angstrom, dtype=np.float64))
@@ -187,8 +187,8 @@ def line_strengths(
     Notes
     -----
     F = sum over atoms of (f0 + f' + i f'') exp(-B s²) exp(2 pi i (hx + ky + lz)), s = sin(theta)/lambda.
-    A powder line holds hkl and its opposite; the mean of their |F|² is that of the part with f0 + f' plus that
-    of the part with f''.
+    A powder line holds hkl and its opposite; the mean of their |F|² is that of the part with f0 + f' plus
+    that of the part with f''.
     """
     structure = phase.structure
     if structure is None:
@@ -224,10 +224,10 @@ def line_strengths(
 def lorentz_polarisation(
     two_theta_deg: ArrayLike, monochromator_two_theta_deg: float | None = None
 ) -> FloatArray:
-    """Return (1 + c cos² 2theta) / ((1 + c) sin² theta cos theta), c = cos² 2theta_M (1 without monochromator).
+    """Return (1 + c cos² 2theta) / ((1 + c) sin² theta cos theta), c = cos² 2theta_M, or 1.
 
     Powder in reflection geometry with fixed slits; `monochromator_two_theta_deg` is that of a crystal in the
-    diffracted beam (26.6 degrees for graphite and Cu K-alpha).
+    diffracted beam (26.6 degrees for graphite and Cu K-alpha); without one, c = 1.
 
     References
     ----------

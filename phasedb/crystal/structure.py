@@ -92,8 +92,8 @@ def space_group(name: str) -> SpaceGroup:
 
 
 def _keys(points: FloatArray) -> NDArray[np.int64]:
-    # Once a point has been moved onto its special position, its images differ by rounding noise (1e-12) or by more
-    # than SAME_POSITION, so any grid in between tells them apart; the offset keeps edges off round numbers.
+    # Once a point has been moved onto its special position, its images differ by rounding noise (1e-12) or by
+    # more than SAME_POSITION, so any grid between tells them apart; the offset keeps edges off round numbers.
     cells = np.floor((points % 1.0) * 1e5 + 0.3719).astype(np.int64) % 100_000
     keys: NDArray[np.int64] = (cells[..., 0] * 100_000 + cells[..., 1]) * 100_000 + cells[..., 2]
     return keys
@@ -173,7 +173,8 @@ def check_structure(structure: Structure, lattice_type: LatticeType | None = Non
     Raises
     ------
     InputError
-        If it has no site, an unknown element, an occupancy, coordinate or B that is not plausible, if two sites hold the same place, or if the space group's lattice differs from `lattice_type`.
+        If it has no site, an unknown element, an occupancy, coordinate or B that is not plausible, if two
+        sites hold the same place, or if the space group's lattice differs from `lattice_type`.
     """
     from phasedb.crystal.elements import element
 
