@@ -209,8 +209,8 @@ def _check_bragg(
     if bad.size:
         word, per = UNIT_WORDS[unit]
         raise InputError(
-            f"{word} {values[bad[0]]:g} {per} means d = {d[bad[0]]:.5g} Å, not above half the wavelength "
-            f"({wavelength / 2.0:.5g} Å)",
+            f"{word} = {values[bad[0]]:g} {per}: d must lie above half the wavelength "
+            f"({wavelength / 2.0:.5g} Å) and is {d[bad[0]]:.5g} Å",
             where=where[bad[0]],
             hint="no line can lie there: check the unit and the wavelength",
         )

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, fields
-from typing import Literal
+from pathlib import Path
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -77,3 +78,17 @@ class PeakList:
 
     def __len__(self) -> int:
         return len(self.position)
+
+    @classmethod
+    def read(cls, path: str | Path, **options: Any) -> PeakList:
+        """Return the peak list in a file; `options` are the fields of `phasedb.measured.options.ReadOptions`.
+
+        Raises
+        ------
+        InputError
+            As `phasedb.measured.reading.read_peak_list`.
+        """
+        from phasedb.measured.options import ReadOptions
+        from phasedb.measured.reading import read_peak_list
+
+        return read_peak_list(path, ReadOptions(**options))
