@@ -85,11 +85,9 @@ def build_peak_list(
     remarks = list(notes)
     strength = _checked_intensity(intensity, order, where, remarks)
 
-    # Rings and electron lists share a scale error, not an angle offset: they stay on ln d.
-    has_angle = wavelength is not None and unit != "ring" and radiation is not None
-    has_angle = has_angle and radiation is not None and radiation.convention != "electron"
-    slope = _relative_slope(values, d, unit, wavelength, length)
-    if has_angle and wavelength is not None:
+    slope = _relative_slope(values, unit, wavelength, length)
+    # Electron lists share an error of scale, not an angle offset: they stay on ln d.
+    if wavelength is not None and radiation is not None and radiation.convention != "electron":
         two_theta = two_theta_from_d(d, wavelength) if unit != "two-theta" else values.copy()
         to_scale = 2.0 * np.tan(np.radians(two_theta) / 2.0) * (180.0 / np.pi) * slope
         if unit == "two-theta":
@@ -263,11 +261,7 @@ def _checked_width(
 
 
 def _relative_slope(
-    values: FloatArray,
-    d: FloatArray,
-    unit: PositionUnit,
-    wavelength: float | None,
-    camera_length_mm: float | None,
+    values: FloatArray, unit: PositionUnit, wavelength: float | None, camera_length_mm: float | None
 ) -> FloatArray:
     """Return |d ln d / d position| for each line."""
     if unit == "two-theta":

@@ -27,8 +27,8 @@ class PeakList:
         ``two-theta``, ``d``, ``q`` or ``ring``.
     d_angstrom : (n_lines,) float64, Å, from `position` as measured (no shift correction).
     two_theta_deg : (n_lines,) float64 or None
-        Degrees, from `d_angstrom` and the wavelength; None without a wavelength, and for rings and electrons,
-        whose common error is one of scale: they are scored on ln d.
+        Degrees, from `d_angstrom` and the wavelength; None without a wavelength and for electrons, whose
+        common error is one of scale: they are scored on ln d.
     intensity : (n_lines,) float64 or None; any scale, above 0
     esd, fwhm : (n_lines,) float64 or None
         Standard uncertainty and full width of the positions, in degrees where `two_theta_deg` is given, else
