@@ -1,0 +1,249 @@
+"""The coordinate that lines are scored on, and how shifts, noise and a lattice constant act on it.
+
+With an X-ray wavelength the coordinate is 2theta in degrees; with electrons, or without a wavelength, it is
+-ln d. On both, x grows with N, so one code serves both.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from phasedb.crystal.radiation import (
+    EMISSION_LINES,
+    W_L_ALPHA1_ANGSTROM,
+    Radiation,
+    d_from_q,
+    d_from_ring_radius,
+    d_from_two_theta,
+    two_theta_from_d,
+)
+from phasedb.identify.settings import ShiftPrior
+from phasedb.measured.peaklist import PeakList
+
+FloatArray = NDArray[np.float64]
+
+DEFAULT_RADIUS_MM = 200.0  # common practice, no source: DESIGN takes 200 mm where the list does not say
+ELECTRON_BELOW_ANGSTROM = 0.2  # shorter wavelengths than any laboratory X-ray tube's K lines
+
+# Ghost lines: kind, how often a list shows them at all, height as a share of the parent's line.
+# K-alpha2 : K-alpha1 is 1 : 2 (International Tables C, 2.3.5.2); a filter or mirror leaves K-beta and tungsten
+# lines at the per-cent level (common practice, no source).
+KIND_LINE, KIND_ALPHA2, KIND_BETA, KIND_TUNGSTEN = 0, 1, 2, 3
+
+
+@dataclass(frozen=True, slots=True)
+class Ghost:
+    """An optional further line of every strong line: wavelength ratio, frequency, relative height."""
+
+    kind: int
+    wavelength_ratio: float
+    frequency: float
+    height: float
+
+
+@dataclass(frozen=True, slots=True)
+class Axis:
+    """Observed lines on the scoring coordinate.
+
+    Attributes
+    ----------
+    x : (n,) ascending
+    ln_intensity : (n,) or None
+        ln of intensity with the strongest line at 1.
+    extra_noise : (n,)
+        Part of the noise that the list itself declares (esd and width), in units of x.
+    low, high : float
+        Measured range on x.
+    wavelength : float or None
+        Å; None on the ln d coordinate.
+    shift_scale : (2,)
+        Student-t scales of the two shift terms: zero and displacement; on ln d, the common scale and nothing.
+    noise_center, noise_spread : float
+        Median of the list's noise scale and its spread in ln.
+    resolution : float
+        Lines of one phase or set closer than this are one line.
+    blend_ratio : float or None
+        Mean over K-alpha1 wavelength, where a line may be the unresolved doublet.
+    blocked : tuple of (low, high)
+        Stretches hidden by foreign lines: nothing is expected there.
+    """
+
+    x: FloatArray
+    ln_intensity: FloatArray | None
+    extra_noise: FloatArray
+    low: float
+    high: float
+    wavelength: float | None
+    radius_mm: float
+    shift_mean: FloatArray
+    shift_scale: FloatArray
+    noise_center: float
+    noise_spread: float
+    resolution: float
+    blend_ratio: float | None
+    ghosts: tuple[Ghost, ...]
+    blocked: tuple[tuple[float, float], ...] = ()
+
+    @property
+    def is_angle(self) -> bool:
+        return self.wavelength is not None
+
+    @property
+    def span(self) -> float:
+        return self.high - self.low
+
+    def positions(self, ln_n: FloatArray, ln_a: FloatArray) -> FloatArray:
+        """Return true (unshifted) x of lines with ½ ln N + ln(wavelength ratio) = `ln_n`; NaN beyond 180°."""
+        if self.wavelength is None:
+            return ln_n - ln_a
+        sine = np.exp(ln_n - ln_a) * (self.wavelength / 2.0)
+        with np.errstate(invalid="ignore"):
+            return np.degrees(2.0 * np.arcsin(sine))
+
+    def slope(self, x_true: FloatArray) -> FloatArray:
+        """Return dx / d ln a at true positions (degrees, or -1)."""
+        if self.wavelength is None:
+            return np.full_like(x_true, -1.0)
+        return -2.0 * np.degrees(np.tan(np.radians(x_true) / 2.0))
+
+    def displacement_basis(self, x_true: FloatArray) -> FloatArray:
+        """Return dx/ds for displacement s in mm: -(2/R)(180/pi) cos(theta); zero on ln d."""
+        if self.wavelength is None:
+            return np.zeros_like(x_true)
+        return -(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0))
+
+    def ln_d(self, x_true: FloatArray) -> FloatArray:
+        """Return ln d (Å) of true positions."""
+        if self.wavelength is None:
+            return -x_true
+        half = np.radians(np.clip(x_true, 1e-3, 179.9)) / 2.0
+        return np.log(self.wavelength / 2.0) - np.log(np.sin(half))
+
+
+def _ghosts(radiation: Radiation | None) -> tuple[Ghost, ...]:
+    if radiation is None or radiation.anode is None:
+        return ()
+    lines = EMISSION_LINES[radiation.anode]
+    base = radiation.wavelength_angstrom
+    found = [
+        Ghost(KIND_BETA, lines.beta / base, 0.10, 0.02),
+        Ghost(KIND_TUNGSTEN, W_L_ALPHA1_ANGSTROM / base, 0.05, 0.02),
+    ]
+    if radiation.convention in ("doublet", "literal") and abs(base / lines.alpha1 - 1.0) < 2e-4:
+        found.append(Ghost(KIND_ALPHA2, lines.alpha2 / base, 0.15, 0.5))
+    return tuple(found)
+
+
+def is_angle_scored(peaks: PeakList) -> bool:
+    """Return whether a list is scored on 2theta (X-rays) rather than on ln d (electrons, or no wavelength)."""
+    radiation = peaks.radiation
+    return (
+        radiation is not None
+        and radiation.convention != "electron"
+        and radiation.wavelength_angstrom > ELECTRON_BELOW_ANGSTROM
+    )
+
+
+def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
+    """Return the scoring axis of a peak list."""
+    radiation = peaks.radiation
+    angle = is_angle_scored(peaks)
+    if peaks.intensity is None:
+        ln_intensity = None
+    else:
+        ln_intensity = np.log(peaks.intensity / peaks.intensity.max())
+    radius = peaks.goniometer_radius_mm or DEFAULT_RADIUS_MM
+    fwhm = np.nan_to_num(peaks.fwhm) if peaks.fwhm is not None else np.zeros(len(peaks))
+    esd = np.nan_to_num(peaks.esd) if peaks.esd is not None else np.zeros(len(peaks))
+    low, high = _range_on_axis(peaks, angle)
+    if angle:
+        assert radiation is not None and peaks.two_theta_deg is not None
+        extra = np.hypot(esd, WIDTH_TO_NOISE * fwhm)
+        typical_width = float(np.median(fwhm)) if fwhm.any() else 0.0
+        blend = None
+        if radiation.convention == "doublet" and radiation.lines is not None:
+            blend = radiation.lines.mean / radiation.lines.alpha1
+        return Axis(
+            x=peaks.two_theta_deg,
+            ln_intensity=ln_intensity,
+            extra_noise=extra,
+            low=low,
+            high=high,
+            wavelength=radiation.wavelength_angstrom,
+            radius_mm=radius,
+            shift_mean=np.array([prior.zero_deg, prior.displacement_mm]),
+            shift_scale=np.array([prior.zero_scale_deg, prior.displacement_scale_mm]),
+            noise_center=NOISE_CENTER_DEG,
+            noise_spread=NOISE_SPREAD,
+            resolution=max(0.03, 0.5 * typical_width),
+            blend_ratio=blend,
+            ghosts=_ghosts(radiation),
+        )
+    relative = np.ones(len(peaks))
+    if peaks.two_theta_deg is not None:  # electrons: the list's degrees become relative
+        relative = 1.0 / (2.0 * np.degrees(np.tan(np.radians(peaks.two_theta_deg) / 2.0)))
+    extra = np.hypot(esd, WIDTH_TO_NOISE * fwhm) * relative
+    is_camera = peaks.unit == "ring" or radiation is not None
+    return Axis(
+        x=-np.log(peaks.d_angstrom),
+        ln_intensity=ln_intensity,
+        extra_noise=extra,
+        low=low,
+        high=high,
+        wavelength=None,
+        radius_mm=radius,
+        shift_mean=np.zeros(2),
+        shift_scale=np.array([SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST, 1e-9]),
+        noise_center=NOISE_CENTER_RELATIVE_CAMERA if is_camera else NOISE_CENTER_RELATIVE,
+        noise_spread=NOISE_SPREAD,
+        resolution=2e-3 if is_camera else 5e-4,
+        blend_ratio=None,
+        ghosts=(),
+    )
+
+
+def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:
+    """Return the measured range on the scoring coordinate."""
+    ends = np.array([peaks.range_low, peaks.range_high])
+    if angle and peaks.unit == "two-theta":
+        return float(ends[0]), float(ends[1])
+    with np.errstate(divide="ignore"):
+        if peaks.unit == "d":
+            d = ends
+        elif peaks.unit == "q":
+            d = d_from_q(ends)
+        elif peaks.unit == "two-theta":
+            assert peaks.radiation is not None
+            d = d_from_two_theta(ends, peaks.radiation.wavelength_angstrom)
+        elif peaks.ring_scale_approximate or peaks.radiation is None:
+            d = peaks.position[0] * peaks.d_angstrom[0] / ends
+        else:
+            d = d_from_ring_radius(
+                ends,
+                wavelength_angstrom=peaks.radiation.wavelength_angstrom,
+                camera_length_mm=peaks.camera_length_mm,
+            )
+        if angle:
+            assert peaks.radiation is not None
+            values = two_theta_from_d(
+                np.maximum(d, peaks.radiation.wavelength_angstrom / 2.0), peaks.radiation.wavelength_angstrom
+            )
+        else:
+            values = -np.log(d)
+    low = float(values.min())
+    if not np.isfinite(low):  # a range that starts at zero angle: nothing cubic lies beyond d = 30 Å
+        low = min(-np.log(30.0), -float(np.log(peaks.d_angstrom.max())) - 0.1)
+    return low, float(values.max())
+
+
+# Scales of the model, from METHODS and tuned on the tuning seeds of tests/study (never on the reporting seeds).
+NOISE_CENTER_DEG = 0.02
+NOISE_SPREAD = 0.9
+NOISE_CENTER_RELATIVE = 6e-4
+NOISE_CENTER_RELATIVE_CAMERA = 3e-3
+SCALE_OF_CAMERA = 5e-3
+SCALE_OF_D_LIST = 7e-4
+WIDTH_TO_NOISE = 0.06

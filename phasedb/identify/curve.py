@@ -1,0 +1,140 @@
+"""Votes on the ln a axis: where a cubic phase of each lattice type would explain measured lines.
+
+For a cubic phase ln d = ln a - ½ ln N, so every measured line votes, for each allowed N, at
+ln a = ln d + ½ ln N. The votes are one curve for each lattice type, whatever the library holds.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from phasedb.crystal.lattice import LATTICE_TYPES, allowed_n
+from phasedb.identify.axis import Axis
+
+FloatArray = NDArray[np.float64]
+
+A_SMALLEST: Final = 2.3
+A_LARGEST: Final = 17.0
+MOST_LINES_VOTING: Final = 120  # the strongest ones of a longer list
+STAMP_HALF_WIDTH: Final = 3.2  # standard deviations
+
+# Chance that the line of rank r of an unknown phase is seen: high for the first lines, lower as the cell grows
+# large (tuned, with the structure types of the starter library in view).
+_RANK_P: Final = {"P": (0.62, 14.0), "I": (0.68, 10.0), "F": (0.66, 9.0)}
+
+
+@dataclass(frozen=True, slots=True)
+class Cell:
+    """One assumption about the list's shift and noise under which the curve is computed."""
+
+    phi: tuple[float, float]
+    sigma: float
+    ln_prior: float
+
+
+@dataclass(frozen=True, slots=True)
+class Curve:
+    """Log evidence against background on an even ln a grid, for each lattice type (rows as LATTICE_TYPES)."""
+
+    cell: Cell
+    start: float
+    step: float
+    values: FloatArray  # (3, n_grid)
+
+    def at(self, lattice: NDArray[np.integer], ln_a: FloatArray) -> FloatArray:
+        """Return the curve at places (nearest grid point; -inf outside); arguments broadcast."""
+        index = np.rint((ln_a - self.start) / self.step).astype(np.int64)
+        size = self.values.shape[1]
+        inside = (index >= 0) & (index < size)
+        found = self.values[lattice, np.clip(index, 0, size - 1)]
+        return np.where(inside, found, -np.inf)
+
+
+@lru_cache(maxsize=8)
+def _rank_chance(lattice: str, count: int) -> FloatArray:
+    first, decay = _RANK_P[lattice]
+    return first * np.exp(-np.arange(count) / decay) + 0.04
+
+
+def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Curve:
+    """Return the curve under one cell.
+
+    Parameters
+    ----------
+    base : (n,) density of each observed line under what is already in the set (background included)
+    explained : (n,) part of each line that phases of the set already claim, 0 to 1
+    """
+    use = np.arange(len(axis.x))
+    if len(use) > MOST_LINES_VOTING:
+        weight = axis.ln_intensity if axis.ln_intensity is not None else -np.abs(axis.x - axis.x.mean())
+        use = np.sort(np.argsort(-(weight - 50.0 * explained), kind="stable")[:MOST_LINES_VOTING])
+    x = axis.x[use] - cell.phi[0]
+    x = x - cell.phi[1] * axis.displacement_basis(x)
+    if axis.is_angle:
+        x = np.clip(x, 0.2, 179.8)
+    ln_d = axis.ln_d(x)
+    sigma = np.hypot(cell.sigma, axis.extra_noise[use])
+    slope = np.abs(axis.slope(x))
+    step = max(2e-4, float(np.median(sigma / slope)) * 0.5)
+    start = np.log(A_SMALLEST)
+    count = int((np.log(A_LARGEST) - start) / step) + 1
+    width = np.maximum(sigma / slope, 0.6 * step)
+    gain = np.maximum(
+        1.0 / (sigma * np.sqrt(2.0 * np.pi) * base[use]) * (sigma / slope) / width, explained[use]
+    )
+    values = np.empty((3, count))
+    grid = start + step * np.arange(count)
+    for row, lattice in enumerate(LATTICE_TYPES):
+        n_top = int(np.exp(2.0 * (np.log(A_LARGEST) - ln_d.min()))) + 1
+        n = allowed_n(lattice, min(n_top, 1500))
+        chance = _rank_chance(lattice, len(n))
+        half = 0.5 * np.log(n)
+        centre = ln_d[:, None] + half
+        line, rank = np.nonzero((centre > start) & (centre < start + step * (count - 1)))
+        c, w = centre[line, rank], width[line]
+        strength = (chance / (1.0 - chance))[rank] * gain[line]
+        reach = int(np.ceil(STAMP_HALF_WIDTH * width.max() / step))
+        offset = np.arange(-reach, reach + 1)
+        middle = np.rint((c - start) / step).astype(np.int64)
+        index = middle[:, None] + offset
+        z = (start + index * step - c[:, None]) / w[:, None]
+        weight = strength[:, None] * np.exp(-0.5 * z * z)
+        ok = (index >= 0) & (index < count) & (np.abs(z) < STAMP_HALF_WIDTH + 0.5)
+        flat = (line[:, None] * count + index)[ok]
+        votes = np.bincount(flat, weights=weight[ok], minlength=len(use) * count).reshape(len(use), count)
+        total = np.zeros(count)
+        for block in range(0, len(use), 40):  # products of up to 40 terms stay finite
+            total += np.log(np.prod(1.0 + np.minimum(votes[block : block + 40], 1e7), axis=0))
+        lowest = axis.ln_d(np.array([max(axis.low, 1e-3) if axis.is_angle else axis.low]))[0]
+        highest = axis.ln_d(np.array([axis.high]))[0]
+        missed = np.concatenate([[0.0], np.cumsum(np.log1p(-chance))])
+        first = np.searchsorted(half, grid - lowest)
+        last = np.searchsorted(half, grid - highest)
+        values[row] = total + missed[last] - missed[first]
+    return Curve(cell, float(start), step, values)
+
+
+def peaks_of(
+    curves: list[Curve], lattice: int, *, most: int, separation: float
+) -> list[tuple[float, float, Cell]]:
+    """Return the highest places of a lattice type over several curves: (score, ln a, cell), best first."""
+    found: list[tuple[float, float, Cell]] = []
+    for curve in curves:
+        values = curve.values[lattice] + curve.cell.ln_prior
+        inner = (values[1:-1] >= values[:-2]) & (values[1:-1] > values[2:])
+        places = np.flatnonzero(inner) + 1
+        top = places[np.argsort(-values[places], kind="stable")[: 4 * most]]
+        found += [(float(values[i]), curve.start + curve.step * int(i), curve.cell) for i in top]
+    found.sort(key=lambda item: (-item[0], item[1]))
+    chosen: list[tuple[float, float, Cell]] = []
+    for item in found:
+        if all(abs(item[1] - other[1]) > separation for other in chosen):
+            chosen.append(item)
+        if len(chosen) == most:
+            break
+    return chosen

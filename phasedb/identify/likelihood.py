@@ -1,0 +1,507 @@
+"""Evidence of many sets of phases at once: the likelihood of DESIGN section 6, integrated by Laplace's method.
+
+For each set the two shift terms, every member's ln a, its share and the list's noise scale are fitted
+together (responsibility-weighted Gauss-Newton, which is the EM algorithm for this mixture), then integrated out:
+Gaussian widths from the information matrix for the continuous ones, a sum over values for share and
+background. All arrays carry the set first: (n_sets, n_members, n_observed, 4), 4 being the predicted
+lines next to each observed one.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from phasedb.identify.axis import KIND_LINE, Axis
+from phasedb.identify.lines import LineTable
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+BoolArray = NDArray[np.bool_]
+
+# Constants of the model. Those marked (tuned) were set on the tuning seeds of tests/study.
+BACKGROUND: Final = np.array([0.2, 0.7, 2.0, 5.0, 12.0, 30.0, 80.0, 250.0, 1000.0])
+BACKGROUND_LN_PRIOR: Final = np.log(np.array([0.25, 0.25, 0.2, 0.13, 0.08, 0.05, 0.02, 0.01, 0.01]))
+MOST_CERTAIN: Final = 0.98  # no predicted line is more certain than this (DESIGN section 6)
+DETECTION_SLOPE: Final = 2.0  # of the logistic in ln(height / floor) (tuned)
+FLOOR_AT_MOST: Final = 0.10  # of the strongest line, when the list is short
+TAIL_SHARE: Final = 0.08  # of lines whose position is off by more than the noise says (tuned)
+TAIL_WIDTH: Final = 3.5
+HEIGHT_SPREAD: Final = (0.45, 1.2)  # ln: powder, textured (tuned)
+HEIGHT_MIX: Final = (0.72, 0.23, 0.05)  # powder, textured, anything: texture cannot veto a phase (tuned)
+SHIFT_TAIL: Final = 3.0  # degrees of freedom of the Student-t priors
+DRIFT_TAIL: Final = 3.0
+SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
+SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
+DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
+N_ITERATIONS: Final = 8
+LN_2PI: Final = float(np.log(2.0 * np.pi))
+FAR: Final = 1e6
+
+
+@dataclass(frozen=True, slots=True)
+class Pool:
+    """Candidates that sets are made of.
+
+    Attributes
+    ----------
+    lines : LineTable
+    ln_a : (n_candidates,) ln of the stored a at the measuring temperature (unlisted: of the starting a)
+    drift_scale : (n_candidates,) Student-t scale of the drift in ln a; 0 for unlisted
+    ln_a_low, ln_a_high : (n_candidates,) stated range, equal to ln_a where there is none
+    ln_odds : (n_candidates,) prior odds of being present; for unlisted, per unit of ln a
+    unlisted : (n_candidates,) bool
+    """
+
+    lines: LineTable
+    ln_a: FloatArray
+    drift_scale: FloatArray
+    ln_a_low: FloatArray
+    ln_a_high: FloatArray
+    ln_odds: FloatArray
+    unlisted: BoolArray
+
+    def __len__(self) -> int:
+        return len(self.ln_a)
+
+
+@dataclass(frozen=True, slots=True)
+class Evaluated:
+    """Fitted sets. `phi` (n_sets, 2) shifts, `ln_a` (n_sets, m), `covariance` (n_sets, 2+m, 2+m)."""
+
+    log_evidence: FloatArray
+    log_likelihood: FloatArray
+    phi: FloatArray
+    ln_a: FloatArray
+    ln_sigma: FloatArray
+    ln_share: FloatArray
+    covariance: FloatArray
+    background: FloatArray  # (n_sets, n_observed): responsibility of the background
+    claims: FloatArray  # (n_sets, m, n_observed, 4)
+    claim_line: IntArray  # (n_sets, m, n_observed, 4) index into the candidate's lines
+    claim_delta: FloatArray  # observed minus predicted, units of x
+    expected: FloatArray  # (n_sets, m): sum of p over plain lines in range
+    base: FloatArray  # (n_sets, n_observed): total density of each line, for growing the set
+    background_rate: FloatArray  # (n_sets,)
+
+
+def log_student(value: FloatArray, scale: FloatArray, tail: float) -> FloatArray:
+    """Return the log density of Student's t with `tail` 3 degrees of freedom and the given scale."""
+    constant = np.log(2.0 / (np.sqrt(3.0) * np.pi))  # Gamma(2)/(Gamma(3/2) sqrt(3 pi))
+    return constant - np.log(scale) - 0.5 * (tail + 1.0) * np.log1p((value / scale) ** 2 / tail)
+
+
+def log_height_density(residual: FloatArray) -> FloatArray:
+    """Return the log density of ln(observed / expected height)."""
+    narrow, wide = HEIGHT_SPREAD
+    norm = 1.0 / np.sqrt(2.0 * np.pi)
+    density = (
+        HEIGHT_MIX[0] * norm / narrow * np.exp(-0.5 * (residual / narrow) ** 2)
+        + HEIGHT_MIX[1] * norm / wide * np.exp(-0.5 * (residual / wide) ** 2)
+        + HEIGHT_MIX[2] / 7.0
+    )
+    return np.log(density)
+
+
+def ln_floor(axis: Axis) -> float:
+    """Return ln of the list's detection floor relative to its strongest line; 0 without intensities."""
+    if axis.ln_intensity is None:
+        return 0.0
+    return float(min(axis.ln_intensity.min() - 0.1, np.log(FLOOR_AT_MOST)))
+
+
+def empty_log_likelihood(axis: Axis) -> float:
+    """Return the log likelihood of *nothing cubic*, every line background, B marginalised."""
+    n = len(axis.x)
+    values = BACKGROUND_LN_PRIOR + n * np.log(BACKGROUND / axis.span) - BACKGROUND
+    return float(np.logaddexp.reduce(values))
+
+
+class _Fit:
+    """One batch of sets of equal size while it is being fitted."""
+
+    def __init__(
+        self,
+        axis: Axis,
+        pool: Pool,
+        members: IntArray,
+        phi: FloatArray,
+        ln_a: FloatArray,
+        ln_sigma: FloatArray,
+    ) -> None:
+        self.axis = axis
+        self.n_sets, self.m = members.shape
+        self.n = len(axis.x)
+        self.members = members
+        lines = pool.lines
+        self.half = lines.half_ln_n[members]
+        self.height = lines.ln_height[members]
+        self.frequency = lines.frequency[members]
+        self.kind = lines.kind[members]
+        self.stored = pool.ln_a[members]
+        self.scale = pool.drift_scale[members]
+        self.low = pool.ln_a_low[members]
+        self.high = pool.ln_a_high[members]
+        self.unlisted = pool.unlisted[members]
+        self.ln_odds = pool.ln_odds[members].sum(axis=1)
+        self.phi = phi.copy()
+        self.u = ln_a.copy()
+        self.ln_sigma = ln_sigma.copy()
+        self.floor = ln_floor(axis)
+        start = -0.7 if axis.ln_intensity is not None else np.log(20.0)
+        self.ln_share = np.full((self.n_sets, self.m), start)
+        self.rate = np.full(self.n_sets, max(1.0, self.n / 4.0))
+        self.use_heights = False
+        self.x_line = np.empty(0)
+
+    # -- predicted lines -------------------------------------------------------------------------
+
+    def predict(self) -> None:
+        """Place every line, and find the four next to each observed one."""
+        axis = self.axis
+        true = np.nan_to_num(axis.positions(self.half, self.u[..., None]), nan=FAR)
+        clipped = np.minimum(true, 179.9) if axis.is_angle else true
+        shift = self.phi[:, 0, None, None] + self.phi[:, 1, None, None] * axis.displacement_basis(clipped)
+        self.x_line = np.where(true < FAR, true + shift, FAR)
+        below = (self.x_line[:, :, None, :] < axis.x[None, None, :, None]).sum(axis=3)
+        offsets = np.arange(-2, 2)
+        index = below[..., None] + offsets
+        count = self.x_line.shape[2]
+        self.neighbour_ok = (index >= 0) & (index < count)
+        self.index = np.clip(index, 0, count - 1)
+        flat = self.index.reshape(self.n_sets, self.m, -1)
+
+        def gather(column: NDArray[np.generic]) -> FloatArray:
+            taken = np.take_along_axis(column, flat, axis=2)
+            return taken.reshape(self.index.shape).astype(np.float64)
+
+        self.near_true = gather(clipped)
+        self.near_x = gather(self.x_line)
+        self.near_height = gather(self.height)
+        self.near_frequency = gather(self.frequency)
+        self.near_plain = gather((self.kind == KIND_LINE).astype(np.float64)) > 0
+        self.neighbour_ok &= self.near_x < FAR
+
+    def chance_seen(self, ln_share: FloatArray, height: FloatArray, frequency: FloatArray) -> FloatArray:
+        """Return p, the chance that a line is seen; `ln_share` broadcasts against `height`."""
+        ratio = np.clip(ln_share + height - self.floor, -40.0, 40.0)
+        return MOST_CERTAIN * frequency / (1.0 + np.exp(-DETECTION_SLOPE * ratio))
+
+    def in_range(self) -> BoolArray:
+        """Return which predicted lines the measurement could have shown."""
+        inside = (self.x_line >= self.axis.low) & (self.x_line <= self.axis.high)
+        for low, high in self.axis.blocked:
+            inside &= (self.x_line < low) | (self.x_line > high)
+        return inside
+
+    # -- responsibilities ------------------------------------------------------------------------
+
+    def respond(self) -> None:
+        """Compute the densities that every predicted line gives to the observed lines beside it."""
+        axis = self.axis
+        sigma2 = np.exp(2.0 * self.ln_sigma)[:, None] + axis.extra_noise[None, :] ** 2
+        sigma = np.sqrt(sigma2)[:, None, :, None]
+        delta = axis.x[None, None, :, None] - self.near_x
+        density, inner, chosen = self._position_density(delta, sigma)
+        self.delta = chosen
+        reach = np.where(
+            (self.near_x < axis.low - 3.0 * sigma) | (self.near_x > axis.high + 3.0 * sigma), 0.0, 1.0
+        )
+        p = self.chance_seen(self.ln_share[:, :, None, None], self.near_height, self.near_frequency)
+        odds = np.where(self.neighbour_ok, p / (1.0 - p), 0.0) * reach
+        density = density * self._height_ratio(self.near_height, self.near_plain)
+        claim = odds * density
+        others = self.rate[:, None, None] / axis.span + claim.sum(axis=(1, 3))[:, None, :]
+        claim = self._one_to_one(claim, others)
+        cross = self._shared_lines(claim, odds, density)
+        base = self.rate[:, None] / axis.span
+        explained = claim.sum(axis=(1, 3)) + cross
+        self.total = base + explained
+        summed = claim.sum(axis=(1, 3))
+        # a shared line is claimed by each of its phases in full
+        boost = np.where(summed > 0, explained / np.where(summed > 0, summed, 1.0), 1.0)
+        self.claims = claim * (boost / self.total)[:, None, :, None]
+        self.explained = explained
+        self.background = base / self.total
+        self.inner = inner
+        self.sigma2 = sigma2
+
+    def _position_density(
+        self, delta: FloatArray, sigma: FloatArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        def mixture(value: FloatArray) -> tuple[FloatArray, FloatArray]:
+            squared = (value / sigma) ** 2
+            core = (1.0 - TAIL_SHARE) * np.exp(-0.5 * squared)
+            tail = TAIL_SHARE / TAIL_WIDTH * np.exp(-0.5 * squared / TAIL_WIDTH**2)
+            return core, tail
+
+        core, tail = mixture(delta)
+        norm = 1.0 / (sigma * np.sqrt(2.0 * np.pi))
+        if self.axis.blend_ratio is None:
+            total = core + tail
+            inner = (core + tail / TAIL_WIDTH**2) / np.maximum(total, 1e-300)
+            return total * norm, inner, delta
+        # Each line of a doublet may be the K-alpha1 peak or, where the splitting is small, the unresolved blend.
+        slope = np.degrees(2.0 * np.tan(np.radians(self.near_true) / 2.0))
+        split = slope * np.log(self.axis.blend_ratio)
+        limit = np.maximum(BLEND_LIMIT_DEG, 3.0 * sigma)
+        share = np.where(3.0 * split < limit, 0.5, 0.0)
+        core2, tail2 = mixture(delta - split)
+        first, second = (1.0 - share) * (core + tail), share * (core2 + tail2)
+        total = first + second
+        use_second = second > first
+        inner_core = np.where(use_second, core2, core)
+        inner_tail = np.where(use_second, tail2, tail)
+        inner = (inner_core + inner_tail / TAIL_WIDTH**2) / np.maximum(inner_core + inner_tail, 1e-300)
+        return total * norm, inner, np.where(use_second, delta - split, delta)
+
+    def _height_ratio(self, height: FloatArray, plain: BoolArray) -> FloatArray:
+        """Return the density of the observed height under the claim over that under the background."""
+        if self.axis.ln_intensity is None or not self.use_heights:
+            return np.ones_like(height)
+        observed = self.axis.ln_intensity[None, None, :, None]
+        residual = observed - self.ln_share[:, :, None, None] - height
+        residual = np.where(plain, residual, residual / 2.0)
+        return np.exp(log_height_density(residual)) * max(0.3 - self.floor, 1.0)
+
+    def _one_to_one(self, claim: FloatArray, others: FloatArray) -> FloatArray:
+        """Let each predicted line explain one observed line only: the one that needs it most."""
+        score = claim / np.maximum(others[..., None] - claim, 1e-300)
+        count = self.x_line.shape[2]
+        row = np.arange(self.n_sets * self.m).reshape(self.n_sets, self.m, 1, 1) * count
+        key = (row + self.index).ravel()
+        best = np.zeros(self.n_sets * self.m * count)
+        np.maximum.at(best, key, score.ravel())
+        keep = score >= best[key].reshape(score.shape)
+        # of exactly equal scores the first observed line has the claim
+        return np.where(keep, claim, 0.0)
+
+    def _shared_lines(self, claim: FloatArray, odds: FloatArray, density: FloatArray) -> FloatArray:
+        """Return the further density where predicted lines of two members coincide.
+
+        One line with p = 1 - (1 - p1)(1 - p2) has r = r1 + r2 + r1 r2: this is the last term.
+        """
+        extra = np.zeros((self.n_sets, self.n))
+        if self.m < 2:
+            return extra
+        best = claim.argmax(axis=3)[..., None]
+        strongest = np.take_along_axis(claim, best, axis=3)[..., 0]
+        r = np.take_along_axis(odds, best, axis=3)[..., 0]
+        dens = np.take_along_axis(density, best, axis=3)[..., 0]
+        x = np.take_along_axis(self.near_x, best, axis=3)[..., 0]
+        for first in range(self.m):
+            for second in range(first + 1, self.m):
+                close = np.abs(x[:, first] - x[:, second]) < self.axis.resolution
+                close &= (strongest[:, first] > 0) & (strongest[:, second] > 0)
+                extra += np.where(
+                    close, r[:, first] * r[:, second] * np.sqrt(dens[:, first] * dens[:, second]), 0.0
+                )
+        return extra
+
+    # -- updates ---------------------------------------------------------------------------------
+
+    def normal_equations(self) -> tuple[FloatArray, FloatArray]:
+        """Return the information matrix and right-hand side of a Gauss-Newton step, priors included."""
+        axis = self.axis
+        weight = self.claims * self.inner / self.sigma2[:, None, :, None]
+        weight = weight * np.where(self.near_plain, 1.0, 0.1)
+        basis = axis.displacement_basis(self.near_true)
+        slope = axis.slope(self.near_true)
+        size = 2 + self.m
+        matrix = np.zeros((self.n_sets, size, size))
+        right = np.zeros((self.n_sets, size))
+
+        def total(value: FloatArray) -> FloatArray:
+            return value.sum(axis=(2, 3))
+
+        w0, wb, wu = total(weight), total(weight * basis), total(weight * slope)
+        wbb, wbu, wuu = (
+            total(weight * basis**2),
+            total(weight * basis * slope),
+            total(weight * slope**2),
+        )
+        matrix[:, 0, 0] = w0.sum(axis=1)
+        matrix[:, 0, 1] = matrix[:, 1, 0] = wb.sum(axis=1)
+        matrix[:, 1, 1] = wbb.sum(axis=1)
+        right[:, 0] = total(weight * self.delta).sum(axis=1)
+        right[:, 1] = total(weight * basis * self.delta).sum(axis=1)
+        for member in range(self.m):
+            at = 2 + member
+            matrix[:, 0, at] = matrix[:, at, 0] = wu[:, member]
+            matrix[:, 1, at] = matrix[:, at, 1] = wbu[:, member]
+            matrix[:, at, at] = wuu[:, member]
+            right[:, at] = total(weight * slope * self.delta)[:, member]
+        offset = self.phi - axis.shift_mean
+        precision = (SHIFT_TAIL + 1.0) / (SHIFT_TAIL * axis.shift_scale**2 + offset**2)
+        drift = self.drift()
+        drift_precision = np.where(
+            self.unlisted,
+            1.0,
+            (DRIFT_TAIL + 1.0) / (DRIFT_TAIL * np.maximum(self.scale, 1e-12) ** 2 + drift**2),
+        )
+        # inside a stated range the prior is flat; it still needs a width for the integral
+        flat = ~self.unlisted & (drift == 0) & (self.high > self.low)
+        width = np.maximum(self.high - self.low, 1e-9)
+        drift_precision = np.where(flat, np.minimum(drift_precision, 4.0 / width**2), drift_precision)
+        for at in range(2):
+            matrix[:, at, at] += precision[:, at]
+            right[:, at] -= precision[:, at] * offset[:, at]
+        for member in range(self.m):
+            at = 2 + member
+            matrix[:, at, at] += drift_precision[:, member]
+            pull = np.where(self.unlisted[:, member], 0.0, drift[:, member])
+            right[:, at] -= drift_precision[:, member] * pull
+        return matrix, right
+
+    def drift(self) -> FloatArray:
+        """Return ln a minus the nearest end of the stated range (or the stored value); 0 inside the range."""
+        return self.u - np.clip(self.u, self.low, self.high)
+
+    def step(self) -> None:
+        """Move shifts, lattice constants and the noise scale one step."""
+        matrix, right = self.normal_equations()
+        change = np.linalg.solve(matrix, right[..., None])[..., 0]
+        limit = 0.12 if self.axis.is_angle else 0.01
+        self.phi[:, 0] += np.clip(change[:, 0], -limit, limit)
+        self.phi[:, 1] += np.clip(change[:, 1], -0.2, 0.2)
+        self.u += np.clip(change[:, 2:], -3e-3, 3e-3)
+        gradient, curvature = self.noise_terms()
+        self.ln_sigma -= np.clip(gradient / curvature, -0.7, 0.7)
+        self.rate = np.clip(self.background.sum(axis=1) + 0.3, BACKGROUND[0], None)
+
+    def noise_terms(self) -> tuple[FloatArray, FloatArray]:
+        """Return gradient and curvature, in ln sigma, of minus the expected log posterior."""
+        axis = self.axis
+        share = np.exp(2.0 * self.ln_sigma)[:, None] / self.sigma2
+        weight = self.claims.sum(axis=(1, 3))
+        misfit = (self.claims * self.inner * self.delta**2).sum(axis=(1, 3)) / self.sigma2
+        gradient = (share * (weight - misfit)).sum(axis=1)
+        gradient += (self.ln_sigma - np.log(axis.noise_center)) / axis.noise_spread**2
+        curvature = (2.0 * share**2 * np.maximum(misfit, 0.3 * weight)).sum(axis=1)
+        return gradient, curvature + 1.0 / axis.noise_spread**2
+
+    def set_shares(self) -> FloatArray:
+        """Choose each member's share; return the log of its integral relative to the chosen value (n_sets, m)."""
+        axis = self.axis
+        plain = np.where(self.near_plain, self.claims, 0.0)
+        inside = self.in_range()
+        if axis.ln_intensity is None:
+            steps = np.broadcast_to(DETECTION_STEPS, (self.n_sets, self.m, len(DETECTION_STEPS)))
+            cell = np.log(1.0 / len(DETECTION_STEPS))
+        else:
+            weight = plain.sum(axis=(2, 3))
+            gap = axis.ln_intensity[None, None, :, None] - self.near_height
+            gap = np.where(np.isfinite(gap), gap, 0.0)
+            centre = (plain * gap).sum(axis=(2, 3)) / np.maximum(weight, 1e-9)
+            centre = np.where(weight > 0.2, centre, self.floor)
+            centre = np.clip(centre, self.floor - 0.5, 0.3)
+            steps = centre[..., None] + SHARE_STEPS
+            cell = np.log(float(SHARE_STEPS[1] - SHARE_STEPS[0]) / SHARE_RANGE)
+        p = self.chance_seen(
+            steps[..., None], self.height[:, :, None, :], (self.frequency * inside)[:, :, None, :]
+        )
+        value = np.log1p(-p).sum(axis=3)
+        near_p = self.chance_seen(
+            steps[:, :, :, None, None], self.near_height[:, :, None], self.near_frequency[:, :, None]
+        )
+        gain = np.log(np.maximum(near_p / (1.0 - near_p), 1e-30))
+        if axis.ln_intensity is not None:
+            residual = axis.ln_intensity[None, None, None, :, None] - steps[:, :, :, None, None]
+            residual = residual - self.near_height[:, :, None]
+            residual = np.where(np.isfinite(residual), residual, 0.0)
+            gain = gain + log_height_density(residual)
+        value = value + (plain[:, :, None] * gain).sum(axis=(3, 4))
+        best = value.argmax(axis=2)
+        self.ln_share = np.take_along_axis(steps, best[..., None], axis=2)[..., 0]
+        self.use_heights = axis.ln_intensity is not None
+        top = value.max(axis=2)
+        return np.log(np.exp(value - top[..., None]).sum(axis=2)) + cell
+
+    # -- evidence --------------------------------------------------------------------------------
+
+    def finish(self) -> Evaluated:
+        """Integrate and return."""
+        axis = self.axis
+        self.predict()
+        self.respond()
+        share_term = self.set_shares()
+        self.respond()
+        inside = self.in_range()
+        p = self.chance_seen(self.ln_share[..., None], self.height, self.frequency * inside)
+        unseen = np.log1p(-p).sum(axis=(1, 2))
+        rates = BACKGROUND[None, :, None] / axis.span
+        levels = np.log(rates + self.explained[:, None, :]).sum(axis=2) - BACKGROUND + BACKGROUND_LN_PRIOR
+        log_likelihood = np.logaddexp.reduce(levels, axis=1) + unseen
+        matrix, _ = self.normal_equations()
+        _, log_det = np.linalg.slogdet(matrix)
+        _, noise_curvature = self.noise_terms()
+        prior = log_student(self.phi - axis.shift_mean, axis.shift_scale, SHIFT_TAIL).sum(axis=1)
+        drift = self.drift()
+        listed = log_student(drift, np.maximum(self.scale, 1e-12), DRIFT_TAIL)
+        # a stated range spreads the prior over itself: density 1/(range + the width of its tails)
+        width = self.high - self.low
+        tails = np.sqrt(3.0) * np.pi / 2.0 * np.maximum(self.scale, 1e-12)
+        listed -= np.log1p(width / tails)
+        prior += np.where(self.unlisted, 0.0, listed).sum(axis=1)
+        noise = (self.ln_sigma - np.log(axis.noise_center)) / axis.noise_spread
+        prior += -0.5 * noise**2 - np.log(axis.noise_spread) - 0.5 * LN_2PI
+        laplace = 0.5 * (3 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
+        evidence = log_likelihood + prior + laplace + share_term.sum(axis=1) + self.ln_odds
+        plain = p * (self.kind == KIND_LINE)
+        return Evaluated(
+            log_evidence=evidence,
+            log_likelihood=log_likelihood,
+            phi=self.phi,
+            ln_a=self.u,
+            ln_sigma=self.ln_sigma,
+            ln_share=self.ln_share,
+            covariance=np.linalg.inv(matrix),
+            background=self.background,
+            claims=self.claims,
+            claim_line=self.index,
+            claim_delta=self.delta,
+            expected=plain.sum(axis=2),
+            base=self.total,
+            background_rate=self.rate,
+        )
+
+
+BLEND_LIMIT_DEG: Final = 0.30  # splitting of K-alpha1 and K-alpha2 above which a peak is K-alpha1 (tuned)
+LARGEST_BATCH: Final = 3_000_000
+
+
+def evaluate(
+    axis: Axis, pool: Pool, members: IntArray, phi: FloatArray, ln_a: FloatArray, ln_sigma: FloatArray
+) -> Evaluated:
+    """Fit and integrate sets of equal size.
+
+    Parameters
+    ----------
+    members : (n_sets, m) int, m >= 1
+        Candidates of each set.
+    phi, ln_a, ln_sigma : (n_sets, 2), (n_sets, m), (n_sets,)
+        Where each fit starts.
+    """
+    m = members.shape[1]
+    cost = m * len(axis.x) * pool.lines.n.shape[1]
+    batch = max(1, LARGEST_BATCH // max(cost, 1))
+    parts = []
+    for start in range(0, len(members), batch):
+        rows = slice(start, start + batch)
+        fit = _Fit(axis, pool, members[rows], phi[rows], ln_a[rows], ln_sigma[rows])
+        for iteration in range(N_ITERATIONS):
+            fit.predict()
+            fit.respond()
+            if iteration % 2 == 0:
+                fit.set_shares()
+                fit.respond()
+            fit.step()
+        parts.append(fit.finish())
+    if len(parts) == 1:
+        return parts[0]
+    return Evaluated(
+        *(np.concatenate([getattr(part, name) for part in parts]) for name in Evaluated.__dataclass_fields__)
+    )

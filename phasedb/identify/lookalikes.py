@@ -1,0 +1,173 @@
+"""Entries whose lines this measurement cannot tell apart, and what would tell them apart."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from phasedb.crystal.lattice import LATTICE_TYPES, hkl_text
+from phasedb.identify.axis import KIND_LINE, Axis
+from phasedb.identify.entries import Entries
+from phasedb.identify.likelihood import DETECTION_SLOPE, ln_floor
+from phasedb.identify.lines import LineTable, make_lines
+
+FloatArray = NDArray[np.float64]
+
+AGREE: Final = 2.5  # standard uncertainties within which two predicted lines agree
+DRIFT_REACH: Final = 3.0  # drift scales within which an entry's a may be moved to agree
+VISIBLE: Final = 0.5
+UNSEEN: Final = 0.12  # a line less likely than this need not be there
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """How the measurement reads one phase: a, noise, share and the shift."""
+
+    ln_a: float
+    ln_a_esd: float
+    sigma: float
+    ln_share: float
+
+
+def find_look_alikes(axis: Axis, entries: Entries, index: int, reading: Reading) -> list[int]:
+    """Return the entries (by index, in name order) that this reading of entry `index` cannot be told from.
+
+    Both need the same visible lines at the same places, each entry's a being free within its drift, whatever
+    the lattice type.
+    """
+    found = []
+    for other in _near(entries, index, reading):
+        if other != index and _agree(axis, entries, index, other, reading):
+            found.append(other)
+    return found
+
+
+def _near(entries: Entries, index: int, reading: Reading) -> list[int]:
+    """Return entries that could agree: same lattice type and a, or a combination that shares a line sequence."""
+    lattice = LATTICE_TYPES[int(entries.lattice[index])]
+    # F without odd lines is P(a/2), and I(a) shares its first lines with P(a/sqrt 2) (METHODS section 4)
+    relatives = [(lattice, 0.0)]
+    relatives += {
+        "F": [("P", -np.log(2.0)), ("I", -0.5 * np.log(2.0))],
+        "P": [("F", np.log(2.0)), ("I", 0.5 * np.log(2.0))],
+        "I": [("P", -0.5 * np.log(2.0)), ("F", 0.5 * np.log(2.0))],
+    }[lattice]
+    near = np.zeros(len(entries), dtype=bool)
+    for name, offset in relatives:
+        target = reading.ln_a + offset
+        drift = target - np.clip(target, entries.ln_a_low, entries.ln_a_high)
+        reach = DRIFT_REACH * entries.drift_scale + AGREE * reading.ln_a_esd
+        near |= (entries.lattice == LATTICE_TYPES.index(name)) & (np.abs(drift) < reach)  # type: ignore[arg-type]
+    return [int(value) for value in np.flatnonzero(near)]
+
+
+def _lines_at(axis: Axis, entries: Entries, index: int, ln_a: float) -> LineTable:
+    return make_lines(axis, np.array([ln_a]), [entries.pattern(index)], with_ghosts=False)
+
+
+def _agree(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> bool:
+    first = _lines_at(axis, entries, one, reading.ln_a)
+    best: float | None = None
+    for offset in (0.0, np.log(2.0), -np.log(2.0), 0.5 * np.log(2.0), -0.5 * np.log(2.0)):
+        target = reading.ln_a + offset
+        drift = target - np.clip(target, entries.ln_a_low[other], entries.ln_a_high[other])
+        if abs(drift) < DRIFT_REACH * entries.drift_scale[other] + AGREE * reading.ln_a_esd:
+            best = float(target)
+            break
+    if best is None:
+        return False
+    second = _lines_at(axis, entries, other, best)
+    return _covers(axis, first, reading.ln_a, second, best, reading) and _covers(
+        axis, second, best, first, reading.ln_a, reading
+    )
+
+
+def _covers(
+    axis: Axis, first: LineTable, ln_a: float, second: LineTable, other_ln_a: float, reading: Reading
+) -> bool:
+    """Return whether each line that `first` must show is one that `second` may show."""
+    x = axis.positions(first.half_ln_n[0], np.array(ln_a))
+    y = axis.positions(second.half_ln_n[0], np.array(other_ln_a))
+    inside = (x >= axis.low) & (x <= axis.high)
+    floor = ln_floor(axis)
+
+    def chance(height: FloatArray) -> FloatArray:
+        return 1.0 / (1.0 + np.exp(np.clip(-DETECTION_SLOPE * (reading.ln_share + height - floor), -40, 40)))
+
+    must = inside & (chance(first.ln_height[0]) > VISIBLE)
+    may = np.isfinite(y) & (chance(second.ln_height[0]) > UNSEEN)
+    tolerance = AGREE * reading.sigma + 0.5 * axis.resolution
+    if not may.any():
+        return not must.any()
+    gap = np.abs(x[must][:, None] - y[may][None, :])
+    return bool((gap.min(axis=1, initial=np.inf) < tolerance).all())
+
+
+def what_separates(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> list[str]:
+    """Return what would tell two look-alikes apart: a line, an element, a wider range."""
+    texts = []
+    table = entries.table
+    first, second = int(entries.rows[one]), int(entries.rows[other])
+    only_one = sorted(set(table.elements[first]) - set(table.elements[second]))
+    only_other = sorted(set(table.elements[second]) - set(table.elements[first]))
+    parts = []
+    if only_one:
+        parts.append(f"{', '.join(only_one)} only in {table.name[first]}")
+    if only_other:
+        parts.append(f"{', '.join(only_other)} only in {table.name[second]}")
+    if parts:
+        texts.append("an element analysis: " + "; ".join(parts))
+    line = _separating_line(axis, entries, one, other)
+    if line:
+        texts.append(line)
+    return texts
+
+
+def _separating_line(axis: Axis, entries: Entries, one: int, other: int) -> str | None:
+    """Return the line with the best chance to separate two entries at their stored a, to 2theta = 150 degrees."""
+    lattice = LATTICE_TYPES[int(entries.lattice[one])]
+    if entries.lattice[one] != entries.lattice[other]:
+        return _extra_line(axis, entries, one, other)
+    gap = abs(float(entries.ln_a[one] - entries.ln_a[other]))
+    n, strength = entries.pattern(one)
+    half = 0.5 * np.log(n)
+    x = axis.positions(half, np.array(float(entries.ln_a[one])))
+    top = 150.0 if axis.is_angle else axis.high
+    usable = (x < top) & (strength > 0.02 * strength.max())
+    if not usable.any() or gap < 1e-5:
+        return None
+    best = int(np.flatnonzero(usable)[np.argmax(x[usable])])
+    apart = gap * abs(float(axis.slope(x[best : best + 1])[0]))
+    name = hkl_text(int(n[best]), lattice)
+    if axis.is_angle:
+        wider = " (needs a wider range)" if x[best] > axis.high else ""
+        return f"line {name} near {x[best]:.2f}° 2theta, where the two lie {apart:.3f}° apart{wider}"
+    return f"line {name} near d = {np.exp(-x[best]):.4f} Å, where the two lie {100 * gap:.2f} % apart"
+
+
+def _extra_line(axis: Axis, entries: Entries, one: int, other: int) -> str | None:
+    """Return the strongest line that only one of two entries of different lattice types has."""
+    best: tuple[float, str] | None = None
+    for mine, yours in ((one, other), (other, one)):
+        lines = _lines_at(axis, entries, mine, float(entries.ln_a[mine]))
+        theirs = _lines_at(axis, entries, yours, float(entries.ln_a[yours]))
+        x = axis.positions(lines.half_ln_n[0], entries.ln_a[mine])
+        y = axis.positions(theirs.half_ln_n[0], entries.ln_a[yours])
+        y = y[np.isfinite(y) & (theirs.ln_height[0] > np.log(2e-3))]
+        for place, height, n, kind in zip(x, lines.ln_height[0], lines.n[0], lines.kind[0], strict=True):
+            if not np.isfinite(place) or kind != KIND_LINE or not axis.low <= place <= axis.high:
+                continue
+            if len(y) and np.abs(y - place).min() < 4 * axis.resolution:
+                continue
+            if best is None or height > best[0]:
+                name = hkl_text(int(n), LATTICE_TYPES[int(entries.lattice[mine])])
+                owner = entries.table.name[int(entries.rows[mine])]
+                where = f"{place:.2f}° 2theta" if axis.is_angle else f"d = {np.exp(-place):.4f} Å"
+                best = (
+                    height,
+                    f"line {name} near {where}, which only {owner} has ({100 * np.exp(height):.1f} % of its strongest)",
+                )
+    return best[1] if best else None

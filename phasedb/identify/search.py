@@ -1,0 +1,424 @@
+"""The search for sets of phases: votes propose, evidence decides, sets grow from the best ones."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from phasedb.crystal.lattice import LATTICE_TYPES
+from phasedb.identify.archetypes import archetypes
+from phasedb.identify.axis import Axis
+from phasedb.identify.curve import A_LARGEST, A_SMALLEST, Cell, Curve, peaks_of, vote
+from phasedb.identify.entries import Entries
+from phasedb.identify.likelihood import (
+    SHIFT_TAIL,
+    Evaluated,
+    Pool,
+    empty_log_likelihood,
+    evaluate,
+    log_student,
+)
+from phasedb.identify.lines import LineTable, make_lines, stack
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+EXPECTED_UNLISTED: Final = 0.3  # cubic phases expected that the library lacks (DESIGN section 6)
+UNLISTED_LATTICE: Final = {"P": 0.27, "I": 0.23, "F": 0.50}  # roughly as in the starter library
+LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
+
+N_SINGLE: Final = 70  # proposals evaluated as first phase
+N_NEXT: Final = 36  # proposals evaluated as a further phase
+N_UNLISTED: Final = 5  # places of each lattice type evaluated as unlisted
+N_PARENTS: Final = 6
+N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
+SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
+HOPELESS: Final = 12.0  # sets this far (nats) below the best are not grown
+STARTS: Final = 2
+
+Key = tuple[int, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Fitted:
+    """One evaluated set: its row in a batch of evaluations."""
+
+    key: Key
+    log_evidence: float
+    batch: Evaluated
+    row: int
+    members: tuple[int, ...]  # in the batch's member order
+
+    @property
+    def phi(self) -> FloatArray:
+        return self.batch.phi[self.row]
+
+    @property
+    def ln_a(self) -> FloatArray:
+        return self.batch.ln_a[self.row]
+
+    @property
+    def ln_sigma(self) -> float:
+        return float(self.batch.ln_sigma[self.row])
+
+
+@dataclass(frozen=True, slots=True)
+class Start:
+    """Where the fit of a set begins."""
+
+    members: tuple[int, ...]
+    phi: tuple[float, float]
+    ln_a: tuple[float, ...]
+    ln_sigma: float
+
+
+class Candidates:
+    """The growing pool: listed entries by index, unlisted phases by place and pattern."""
+
+    def __init__(self, axis: Axis, entries: Entries) -> None:
+        self.axis = axis
+        self.entries = entries
+        self._tables: list[LineTable] = []
+        self._stacked: Pool | None = None
+        self._columns: list[tuple[float, float, float, float, float, bool]] = []
+        self.entry_of: list[int] = []  # -1 for unlisted
+        self.lattice_of: list[int] = []
+        self.pattern_of: list[int] = []  # which line pattern an unlisted phase is given
+        self._of_entry: dict[int, int] = {}
+        self._of_place: dict[tuple[int, int], list[int]] = {}
+
+    def add_entries(self, indices: Iterable[int]) -> list[int]:
+        """Return pool numbers of listed entries, making their lines if they are new."""
+        wanted = list(indices)
+        new = [index for index in dict.fromkeys(wanted) if index not in self._of_entry]
+        if new:
+            e = self.entries
+            rows = np.array(new)
+            self._tables.append(make_lines(self.axis, e.ln_a[rows], [e.pattern(index) for index in new]))
+            for index in new:
+                self._of_entry[index] = len(self._columns)
+                self._columns.append(
+                    (
+                        float(e.ln_a[index]),
+                        float(e.drift_scale[index]),
+                        float(e.ln_a_low[index]),
+                        float(e.ln_a_high[index]),
+                        float(e.ln_odds[index]),
+                        False,
+                    )
+                )
+                self.entry_of.append(index)
+                self.lattice_of.append(int(e.lattice[index]))
+                self.pattern_of.append(-1)
+            self._stacked = None
+        return [self._of_entry[index] for index in wanted]
+
+    def add_unlisted(self, lattice: int, ln_a: float) -> list[int]:
+        """Return pool numbers of an unlisted phase at a place, one for each line pattern it may have."""
+        place = (lattice, round(ln_a / SAME_PLACE))
+        if place not in self._of_place:
+            name = LATTICE_TYPES[lattice]
+            patterns = archetypes(name, float(np.exp(ln_a)))
+            places = np.full(len(patterns), ln_a)
+            self._tables.append(make_lines(self.axis, places, [(n, s) for _, n, s in patterns]))
+            density = np.log(EXPECTED_UNLISTED * UNLISTED_LATTICE[name] / LN_A_SPAN)
+            numbers = []
+            for pattern, (ln_weight, _, _) in enumerate(patterns):
+                numbers.append(len(self._columns))
+                self._columns.append((ln_a, 0.0, ln_a, ln_a, density + ln_weight, True))
+                self.entry_of.append(-1)
+                self.lattice_of.append(lattice)
+                self.pattern_of.append(pattern)
+            self._of_place[place] = numbers
+            self._stacked = None
+        return self._of_place[place]
+
+    @property
+    def pool(self) -> Pool:
+        """The candidates as columns."""
+        if self._stacked is None:
+            lines = stack(self._tables)
+            self._tables = [lines]
+            columns = np.array([column[:5] for column in self._columns])
+            unlisted = np.array([column[5] for column in self._columns], dtype=bool)
+            self._stacked = Pool(lines, *columns.T, unlisted)  # type: ignore[call-arg]
+        return self._stacked
+
+
+class Search:
+    """One search over sets of phases for one list."""
+
+    def __init__(
+        self, axis: Axis, entries: Entries, most_phases: int, *, always: tuple[int, ...] = ()
+    ) -> None:
+        self.axis = axis
+        self.entries = entries
+        self.candidates = Candidates(axis, entries)
+        self.most_phases = most_phases
+        self.always = tuple(self.candidates.add_entries(always))
+        self.empty = empty_log_likelihood(axis)
+        self.found: dict[Key, Fitted] = {}
+        self.first_curves: list[Curve] = []
+        self._proposals: dict[Key, list[tuple[float, Start]]] = {}
+
+    # -- proposals -------------------------------------------------------------------------------
+
+    def _first_cells(self) -> list[Cell]:
+        axis = self.axis
+        cells = []
+        scale = float(axis.shift_scale[0])
+        reach = 7.0 * scale
+        typical = float(np.median(axis.extra_noise))
+        for level in (1.0, 3.0, 9.0):
+            sigma = axis.noise_center * level
+            if level < 9.0 and typical > 2.0 * sigma:
+                continue
+            width = np.hypot(sigma, typical)
+            count = int(np.ceil(reach / (1.6 * width)))
+            for step in range(-count, count + 1):
+                shift = reach * step / max(count, 1)
+                noise = np.log(level) / axis.noise_spread
+                prior = -0.5 * noise**2 + float(
+                    log_student(np.array(shift), np.array(1.3 * scale), SHIFT_TAIL)
+                    - log_student(np.array(0.0), np.array(1.3 * scale), SHIFT_TAIL)
+                )
+                cells.append(Cell(self._split_shift(shift), float(sigma), float(prior)))
+        return cells
+
+    def _split_shift(self, shift: float) -> tuple[float, float]:
+        """Return (zero, displacement) that make half of a shift at low angle each."""
+        mean = self.axis.shift_mean
+        if not self.axis.is_angle:
+            return float(mean[0] + shift), 0.0
+        per_mm = float(self.axis.displacement_basis(np.array([0.0]))[0])
+        return float(mean[0] + 0.5 * shift), float(mean[1] + 0.5 * shift / per_mm)
+
+    def _cells_beside(self, parent: Fitted) -> list[Cell]:
+        sigma = float(np.exp(parent.ln_sigma))
+        z, s = (float(value) for value in parent.phi)
+        wide = float(np.sqrt(parent.batch.covariance[parent.row, 0, 0]))
+        nudge = min(max(wide, sigma), 2.0 * float(self.axis.shift_scale[0]))
+        return [
+            Cell((z, s), sigma, 0.0),
+            Cell((z, s), 2.5 * sigma, -0.5),
+            Cell((z + nudge, s), sigma, -0.5),
+            Cell((z - nudge, s), sigma, -0.5),
+        ]
+
+    def _propose(self, key: Key, n_listed: int) -> list[tuple[float, Start]]:
+        """Return the best candidates beside a set, as (score, start), best first."""
+        if key in self._proposals:
+            return self._proposals[key]
+        axis = self.axis
+        parent = self.found.get(key)
+        if parent is None:
+            base = np.full(len(axis.x), max(1.0, len(axis.x) / 5.0) / axis.span)
+            explained = np.zeros(len(axis.x))
+            cells = self._first_cells()
+        else:
+            explained = 1.0 - parent.batch.background[parent.row]
+            base = parent.batch.base[parent.row]
+            cells = self._cells_beside(parent)
+        curves = [vote(axis, cell, base, explained) for cell in cells]
+        if parent is None:
+            self.first_curves = curves
+        known: tuple[int, ...] = parent.members if parent is not None else ()
+        known_ln_a = tuple(float(value) for value in parent.ln_a) if parent is not None else ()
+        result: list[tuple[float, Start]] = []
+        scores, places, which_cell = self._screen(curves)
+        taken = {self.candidates.entry_of[member] for member in known}
+        best = scores.max(axis=0)
+        order = [int(i) for i in np.argsort(-best, kind="stable") if int(i) not in taken][:n_listed]
+        order = [index for index in order if np.isfinite(best[index])]
+        numbers = self.candidates.add_entries(order)
+        for index, number in zip(order, numbers, strict=True):
+            ranked = np.argsort(-scores[:, index], kind="stable")
+            used: list[Cell] = []
+            for which in ranked:
+                cell = curves[which_cell[which, index]].cell
+                if scores[which, index] < best[index] - 6.0 or len(used) == STARTS:
+                    break
+                used.append(cell)
+                start = Start(
+                    (*known, number),
+                    cell.phi,
+                    (*known_ln_a, float(places[which, index])),
+                    float(np.log(cell.sigma)),
+                )
+                result.append((float(scores[which, index]), start))
+        n_unlisted = sum(self.candidates.entry_of[member] < 0 for member in known)
+        if n_unlisted < 2:
+            for lattice in range(3):
+                for score, ln_a, cell in peaks_of(curves, lattice, most=N_UNLISTED, separation=SAME_PLACE):
+                    near = [
+                        member
+                        for member, value in zip(known, known_ln_a, strict=True)
+                        if self.candidates.lattice_of[member] == lattice and abs(value - ln_a) < SAME_PLACE
+                    ]
+                    if near:
+                        continue
+                    for number in self.candidates.add_unlisted(lattice, ln_a):
+                        start = Start(
+                            (*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma))
+                        )
+                        result.append((score, start))
+        self._proposals[key] = result
+        return result
+
+    def _screen(self, curves: list[Curve]) -> tuple[FloatArray, FloatArray, IntArray]:
+        """Return the best score of each entry in each group of cells, its ln a, and the cell.
+
+        Cells are grouped by noise level, so that a start is kept for a sharp and for a rough reading.
+        """
+        entries = self.entries
+        levels = sorted({round(float(np.log(curve.cell.sigma)), 6) for curve in curves})
+        scores = np.full((len(levels), len(entries)), -np.inf)
+        places = np.zeros((len(levels), len(entries)))
+        which = np.zeros((len(levels), len(entries)), dtype=np.int64)
+        for number, curve in enumerate(curves):
+            level = levels.index(round(float(np.log(curve.cell.sigma)), 6))
+            best, ln_a = self._best_in_window(curve)
+            better = best + curve.cell.ln_prior > scores[level]
+            scores[level] = np.where(better, best + curve.cell.ln_prior, scores[level])
+            places[level] = np.where(better, ln_a, places[level])
+            which[level] = np.where(better, number, which[level])
+        return scores, places, which
+
+    def _best_in_window(self, curve: Curve) -> tuple[FloatArray, FloatArray]:
+        entries = self.entries
+        best = np.full(len(entries), -np.inf)
+        place = entries.ln_a.copy()
+        reach = 5.0 * entries.drift_scale + 0.5 * (entries.ln_a_high - entries.ln_a_low)
+        middle = 0.5 * (entries.ln_a_high + entries.ln_a_low)
+        size = np.ceil(np.minimum(reach, 0.04) / curve.step).astype(np.int64)
+        for count in np.unique(size):
+            rows = np.flatnonzero(size == count)
+            offset = curve.step * np.arange(-count, count + 1)
+            ln_a = middle[rows, None] + offset
+            drift = ln_a - np.clip(ln_a, entries.ln_a_low[rows, None], entries.ln_a_high[rows, None])
+            scale = entries.drift_scale[rows, None]
+            prior = -2.0 * np.log1p((drift / scale) ** 2 / 3.0)
+            value = curve.at(entries.lattice[rows, None], ln_a) + prior
+            column = value.argmax(axis=1)
+            best[rows] = value[np.arange(len(rows)), column]
+            place[rows] = ln_a[np.arange(len(rows)), column]
+        return best, place
+
+    # -- evaluation ------------------------------------------------------------------------------
+
+    def _evaluate(self, starts: Iterable[Start]) -> list[Fitted]:
+        """Evaluate new sets (several starts of one set compete) and remember them."""
+        by_size: dict[int, list[Start]] = {}
+        for start in starts:
+            if tuple(sorted(start.members)) not in self.found:
+                by_size.setdefault(len(start.members), []).append(start)
+        fresh: dict[Key, Fitted] = {}
+        for group in by_size.values():
+            batch = evaluate(
+                self.axis,
+                self.candidates.pool,
+                np.array([start.members for start in group]),
+                np.array([start.phi for start in group]),
+                np.array([start.ln_a for start in group]),
+                np.array([start.ln_sigma for start in group]),
+            )
+            for row, start in enumerate(group):
+                evidence = float(batch.log_evidence[row])
+                key = tuple(sorted(start.members))
+                if not np.isfinite(evidence) or self._collides(start.members, batch.ln_a[row]):
+                    continue
+                if key not in fresh or evidence > fresh[key].log_evidence:
+                    fresh[key] = Fitted(key, evidence, batch, row, start.members)
+        self.found.update(fresh)
+        return list(fresh.values())
+
+    def _collides(self, members: tuple[int, ...], ln_a: FloatArray) -> bool:
+        """Return whether an unlisted member sits where another member of its lattice type does."""
+        for i, first in enumerate(members):
+            for j in range(i + 1, len(members)):
+                second = members[j]
+                unlisted = self.candidates.entry_of[first] < 0 or self.candidates.entry_of[second] < 0
+                same = self.candidates.lattice_of[first] == self.candidates.lattice_of[second]
+                if unlisted and same and abs(float(ln_a[i] - ln_a[j])) < SAME_PLACE:
+                    return True
+        return False
+
+    def _distinct(self, sets: Iterable[Fitted], most: int, floor: float) -> list[Fitted]:
+        """Return the best sets that differ in more than the name of a look-alike."""
+        chosen: list[Fitted] = []
+        for item in sorted(sets, key=lambda fit: (-fit.log_evidence, fit.key)):
+            if item.log_evidence < floor:
+                break
+            if not any(self._same_modes(item, other) for other in chosen):
+                chosen.append(item)
+            if len(chosen) == most:
+                break
+        return chosen
+
+    def _same_modes(self, one: Fitted, other: Fitted) -> bool:
+        if len(one.members) != len(other.members):
+            return False
+        left = sorted(
+            (self.candidates.lattice_of[m], float(u)) for m, u in zip(one.members, one.ln_a, strict=True)
+        )
+        right = sorted(
+            (self.candidates.lattice_of[m], float(u)) for m, u in zip(other.members, other.ln_a, strict=True)
+        )
+        return all(a[0] == b[0] and abs(a[1] - b[1]) < SAME_PLACE for a, b in zip(left, right, strict=True))
+
+    def run(self) -> None:
+        """Grow sets level by level, then exchange members of the best ones."""
+        level = self._first_level()
+        best = max(
+            [self.empty, *(fit.log_evidence for fit in level)] if not self.always else [level[0].log_evidence]
+        )
+        for _ in range(1, self.most_phases):
+            parents = self._distinct(level, N_PARENTS, best - HOPELESS)
+            starts = [start for parent in parents for _, start in self._propose(parent.key, N_NEXT)]
+            level = self._evaluate(starts)
+            if not level:
+                break
+            top = max(fit.log_evidence for fit in level)
+            if top < best - 6.0:
+                break
+            best = max(best, top)
+        self._exchange(best)
+
+    def _first_level(self) -> list[Fitted]:
+        starts = [start for _, start in self._propose((), N_SINGLE)]
+        if not self.always:
+            return self._evaluate(starts)
+        (standard,) = self.always
+        own = [start for start in starts if start.members == (standard,)]
+        ln_a = float(self.candidates.pool.ln_a[standard])
+        own += [
+            Start((standard,), cell.phi, (ln_a,), float(np.log(cell.sigma)))
+            for cell in (curve.cell for curve in self.first_curves)
+        ]
+        return self._evaluate(own)
+
+    def _exchange(self, best: float) -> None:
+        """Try every other candidate in each place of the best sets: look-alikes must all be weighed."""
+        for fit in self._distinct(self.found.values(), N_FINAL, best - 5.0):
+            if len(fit.members) < 2:
+                continue
+            starts = []
+            for place in range(len(fit.members)):
+                if fit.members[place] in self.always:
+                    continue
+                rest = tuple(sorted(fit.members[:place] + fit.members[place + 1 :]))
+                if rest not in self.found:
+                    continue
+                starts += [start for _, start in self._propose(rest, N_NEXT)]
+            self._evaluate(starts)
+
+    def sets(self) -> Iterator[Fitted]:
+        """Yield all evaluated sets."""
+        yield from self.found.values()
+
+
+__all__ = ["Candidates", "Fitted", "Search", "Start"]
