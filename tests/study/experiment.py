@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -146,3 +146,44 @@ def draw_noise(rng: np.random.Generator, width_deg: float) -> float:
     else:
         noise = float(np.clip(rng.lognormal(np.log(0.015), 0.7), 0.005, 0.1))
     return min(max(noise, 0.02 * width_deg), 0.3)
+
+
+def clean(anode: str = "Cu", low: float = 20.0, high: float = 100.0, **changes: object) -> Experiment:
+    """Return a well-aligned measurement with one wavelength (K-alpha1) and nothing odd; `changes` make it odd."""
+    plain = Experiment(
+        emission=EMISSION_LINES[anode],
+        declared=radiation_from_name(anode + "-Ka1"),
+        monochromatic=True,
+        centroids=False,
+        low=low,
+        high=high,
+        gives_range=True,
+        gives_fwhm=False,
+        gives_radius=True,
+        radius_mm=200.0,
+        zero_deg=0.0,
+        displacement_mm=0.0,
+        noise_deg=0.01,
+        fwhm_deg=0.08,
+        size_deg=0.0,
+        resolution=0.6,
+        floor=0.01,
+        lost=0.0,
+        n_spurious=0,
+        intensity_spread=0.05,
+        tilt=0.0,
+        monochromator_cos2=1.0,
+        texture_chance=0.0,
+        lists_alpha2=False,
+        beta_ratio=0.0,
+        tungsten_ratio=0.0,
+        step_deg=0.0,
+        as_d=False,
+        d_decimals=4,
+    )
+    return replace(plain, **changes)  # type: ignore[arg-type]
+
+
+def doublet(anode: str = "Cu", low: float = 20.0, high: float = 100.0, **changes: object) -> Experiment:
+    """Return the same with the K-alpha doublet, as most laboratories have it."""
+    return clean(anode, low, high, monochromatic=False, declared=radiation_from_name(anode), **changes)

@@ -20,10 +20,10 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from study.oracle import Verdict
-from study.truth import Case, TruePhase
 
 from phasedb.identify.result import Match
+from study.oracle import Verdict
+from study.truth import Case, TruePhase
 
 CLAIM = 0.5
 LATTICE_CONSTANT_TOLERANCE = 0.005

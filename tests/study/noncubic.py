@@ -12,12 +12,12 @@ from functools import lru_cache
 
 import gemmi
 import numpy as np
+
+from phasedb.crystal.phases import PhaseTable
 from study.experiment import Experiment
 from study.physics import lorentz_polarisation, two_theta
 from study.simulate import Lines, add_diffracted, finish_case, observe
 from study.truth import Case, FloatArray
-
-from phasedb.crystal.phases import PhaseTable
 
 D_MIN = 0.6
 """Shortest d in Å that lines are summed for."""

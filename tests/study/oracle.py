@@ -11,11 +11,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from study.physics import lorentz_polarisation, two_theta
-from study.truth import Case, FloatArray, TruePhase, Truth
 
 from phasedb.crystal.lattice import LATTICE_TYPES, allowed_n, multiplicity
 from phasedb.crystal.phases import DRIFT_CLASSES, PhaseTable
+from study.physics import lorentz_polarisation, two_theta
+from study.truth import Case, FloatArray, TruePhase, Truth
 
 LOOK_ALIKE_NATS = float(np.log(20.0))
 """An entry whose evidence is at most this far (natural log) below the true one's cannot be told from it."""

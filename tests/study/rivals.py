@@ -10,13 +10,13 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
-from study.physics import two_theta
-from study.truth import FloatArray
 
 from phasedb.crystal.lattice import LATTICE_TYPES, allowed_n
 from phasedb.crystal.phases import PhaseTable
 from phasedb.crystal.radiation import radiation_from_name
 from phasedb.measured.peaklist import PeakList
+from study.physics import two_theta
+from study.truth import FloatArray
 
 TOLERANCE_DEG = 0.1
 """Fixed tolerance in 2theta (common practice, no source)."""

@@ -18,6 +18,8 @@ from dataclasses import asdict, dataclass
 from functools import partial
 from pathlib import Path
 
+from phasedb.identify import match
+from phasedb.identify.settings import MatchSettings
 from study.library import starter_table
 from study.metrics import ListScore, score
 from study.oracle import judge
@@ -25,9 +27,6 @@ from study.rivals import RIVALS
 from study.sets import SETS, make_case
 from study.tables import figures_text, reliability_text, rivals_text
 from study.truth import Case
-
-from phasedb.identify import match
-from phasedb.identify.settings import MatchSettings
 
 
 @dataclass(frozen=True, slots=True)

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
+
 from study.experiment import Experiment
 from study.library import starter_table
 from study.noncubic import noncubic_list

@@ -9,6 +9,13 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 import numpy as np
+
+from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType, allowed_n, multiplicity
+from phasedb.crystal.phases import DRIFT_CLASSES, PhaseTable
+from phasedb.crystal.radiation import W_L_ALPHA1_ANGSTROM, d_from_two_theta
+from phasedb.errors import InputError
+from phasedb.measured.building import build_peak_list
+from phasedb.measured.peaklist import PeakList
 from study.experiment import Experiment
 from study.library import without
 from study.physics import (
@@ -20,13 +27,6 @@ from study.physics import (
     width_deg,
 )
 from study.truth import Case, FloatArray, TruePhase, Truth
-
-from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType
-from phasedb.crystal.phases import DRIFT_CLASSES, PhaseTable
-from phasedb.crystal.radiation import W_L_ALPHA1_ANGSTROM, d_from_two_theta
-from phasedb.errors import InputError
-from phasedb.measured.building import build_peak_list
-from phasedb.measured.peaklist import PeakList
 
 LEAST_LINES = 3
 """Each phase of a sample leaves at least this many lines in the list: with fewer no one could name it."""
@@ -111,10 +111,18 @@ def phase_lines(table: PhaseTable, row: int, rng: np.random.Generator) -> tuple[
     if table.line_start[row] == table.line_start[row + 1]:
         counts = np.diff(table.line_start)
         similar = np.flatnonzero((table.lattice == table.lattice[row]) & (counts > 0))
+        if not len(similar):
+            return _plain_lines(LATTICE_TYPES[int(table.lattice[row])], float(table.a_angstrom[row]))
         ratio = np.abs(np.log(table.a_angstrom[similar] / table.a_angstrom[row]))
         row = int(rng.choice(similar[np.argsort(ratio)[:12]]))
     part = slice(int(table.line_start[row]), int(table.line_start[row + 1]))
     return table.line_n[part].astype(np.int64), table.line_strength[part]
+
+
+def _plain_lines(lattice: LatticeType, a: float) -> tuple[np.ndarray, FloatArray]:
+    n = allowed_n(lattice, int((2.0 * a) ** 2))
+    planes = np.array([multiplicity(lattice, int(value)) for value in n], dtype=float)
+    return n, planes * np.exp(-4.0 * n / (2.0 * a) ** 2)
 
 
 def make_list(
@@ -361,3 +369,30 @@ def random_list(table: PhaseTable, seed: tuple[int, ...], *, with_intensity: boo
         measured = hand_over(lines, setting, rng, with_intensity=with_intensity, d_only=False)
         if measured is not None and len(measured[0]) >= 4:
             return finish_case(table, *measured, (), setting, seed, "random lines")
+
+
+def sample(
+    table: PhaseTable,
+    contents: dict[str, tuple[float | None, float]],
+    setting: Experiment,
+    *,
+    seed: int = 1,
+    with_intensity: bool = True,
+    removed: tuple[str, ...] = (),
+) -> Case:
+    """Return the list of a stated sample: name -> (a in Å or None for the stored one, share).
+
+    The entries called `removed` are in the sample but not in the table of the case.
+    """
+    names = sorted(contents, key=lambda name: name not in removed)
+    rows = np.array([table.name.index(name) for name in names])
+    a_true = np.array(
+        [contents[name][0] or table.a_angstrom[row] for name, row in zip(names, rows, strict=True)]
+    )
+    case = make_list(
+        table, rows, a_true, np.array([contents[name][1] for name in names]), setting,
+        np.random.default_rng(seed), seed=(seed,), with_intensity=with_intensity, remove=len(removed),
+    )  # fmt: skip
+    if case is None:
+        raise ValueError("this sample leaves no line in the range")
+    return case

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
+
 from study.metrics import (
     ListScore,
     bootstrap,
