@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 
 _Command = TypeVar("_Command", bound=Callable[..., Any])
 
+_STYLES: dict[str, dict[str, Any]] = {"heading": {"bold": True}, "weak": {"dim": True}}
+
 
 def json_option(command: _Command) -> _Command:
     """Add ``--json``."""
@@ -31,11 +33,28 @@ def note(text: str) -> None:
     click.echo(text, err=True)
 
 
-def open_library(ctx: click.Context, *, write: bool = False) -> Library:
+def examples(*lines: str) -> str:
+    """Return example commands as the epilog of a ``--help``: ``@click.command(epilog=examples(...))``."""
+    return "\n".join(["\b", "Examples:", *(f"  {line}" for line in lines)])
+
+
+def print_text(render: Callable[..., str], *values: Any) -> None:
+    """Print ``render(*values, width=, style=)``: as wide as the terminal, coloured only there."""
+    from phasedb.report.table import colour_wanted, output_width
+
+    coloured = colour_wanted()
+
+    def style(text: str, role: str) -> str:
+        return click.style(text, **_STYLES[role]) if coloured else text
+
+    click.echo(render(*values, width=output_width(), style=style), color=coloured)
+
+
+def open_library(ctx: click.Context, *, write: bool = False, as_of: str | None = None) -> Library:
     """Open the library that ``--store`` names, acting as ``--by``; closed when the command ends."""
     from phasedb.library import Library
 
     settings: Settings = ctx.find_root().obj
-    library = Library.open(settings.store, by=settings.by, write=write)
+    library = Library.open(settings.store, by=settings.by, write=write, as_of=as_of)
     ctx.call_on_close(library.close)
     return library
