@@ -10,16 +10,14 @@ from numpy.typing import NDArray
 
 from phasedb import __version__
 from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType, families
-from phasedb.crystal.radiation import d_from_two_theta
 from phasedb.identify.axis import KIND_ALPHA2, KIND_BETA, KIND_LINE, KIND_TUNGSTEN, Axis
 from phasedb.identify.chance import expected_by_chance
 from phasedb.identify.entries import Entries
 from phasedb.identify.foreign import ForeignLines
 from phasedb.identify.lookalikes import Reading, find_look_alikes, what_separates
 from phasedb.identify.merit import merit_f, merit_m, possible_lines
-from phasedb.identify.posterior import Posterior, WeightedSet
+from phasedb.identify.posterior import Posterior
 from phasedb.identify.result import (
-    AxisCurve,
     Claim,
     ClaimKind,
     LedgerLine,
@@ -96,7 +94,7 @@ class Assembler:
             shift=self._shift(),
             ledger=self._ledger(),
             cautions=tuple(self.cautions),
-            axis=self._curves(),
+            axis=self.search.axis_curves(),
         )
 
     def _settings(self) -> dict[str, Any]:
@@ -481,34 +479,3 @@ class Assembler:
             return d
         # Q and ring radius are, to the size of a shift, inversely proportional to d; so is a small 2theta
         return position * d_measured / d
-
-    # -- figure ----------------------------------------------------------------------------------
-
-    def _curves(self) -> tuple[AxisCurve, ...]:
-        """Return the first votes, the best over shift and noise, thinned for a figure."""
-        curves = self.search.first_curves
-        if not curves:
-            return ()
-        start = min(curve.start for curve in curves)
-        stop = max(curve.start + curve.step * (curve.values.shape[1] - 1) for curve in curves)
-        places = np.linspace(start, stop, 1600)
-        width = places[1] - places[0]
-        made = []
-        for row, lattice in enumerate(LATTICE_TYPES):
-            top = np.full(len(places), -np.inf)
-            for curve in curves:
-                grid = curve.start + curve.step * np.arange(curve.values.shape[1])
-                index = np.clip(np.rint((grid - start) / width).astype(np.int64), 0, len(places) - 1)
-                np.maximum.at(top, index, curve.values[row] + curve.cell.ln_prior)
-            known = np.isfinite(top)
-            made.append(
-                AxisCurve(
-                    lattice,
-                    tuple(float(round(value, 5)) for value in places[known]),
-                    tuple(float(round(value, 3)) for value in top[known]),
-                )
-            )
-        return tuple(made)
-
-
-__all__ = ["Assembler", "WeightedSet", "d_from_two_theta"]

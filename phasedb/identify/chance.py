@@ -45,7 +45,7 @@ def expected_by_chance(
         count = phase_count * float(np.mean(entries.lattice == index))
         values = _windowed(curve.values[index], reach)
         values = values[np.abs(grid - ln_a) > EXCLUDED]
-        total += count * _share_at_least(values, score)
+        total += count * share_at_least(values, score)
     return float(total)
 
 
@@ -55,7 +55,8 @@ def _windowed(values: FloatArray, reach: int) -> FloatArray:
     return np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1).max(axis=1)
 
 
-def _share_at_least(values: FloatArray, score: float) -> float:
+def share_at_least(values: FloatArray, score: float) -> float:
+    """Return the share of `values` at or above `score`, extrapolated exponentially beyond the highest ones."""
     share = float(np.mean(values >= score))
     if share > 1.0 - TAIL_QUANTILES[1]:
         return share

@@ -37,7 +37,9 @@ DRIFT_TAIL: Final = 3.0
 SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
 DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
-N_ITERATIONS: Final = 8
+N_ITERATIONS: Final = 7
+SET_SHARES_AT: Final = (0, 1, 3, 5)
+FIND_NEIGHBOURS_AT: Final = (0, 2, 4)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
 
@@ -178,12 +180,21 @@ class _Fit:
             taken = np.take_along_axis(column, flat, axis=2)
             return taken.reshape(self.index.shape).astype(np.float64)
 
-        self.near_true = gather(clipped)
-        self.near_x = gather(self.x_line)
+        self.near_half = gather(self.half)
         self.near_height = gather(self.height)
         self.near_frequency = gather(self.frequency)
-        self.near_plain = gather((self.kind == KIND_LINE).astype(np.float64)) > 0
+        self.near_plain = gather(self.kind == KIND_LINE) > 0
+        self.place_neighbours()
         self.neighbour_ok &= self.near_x < FAR
+
+    def place_neighbours(self) -> None:
+        """Place the neighbouring lines only: enough between two looks at all lines."""
+        axis = self.axis
+        true = np.nan_to_num(axis.positions(self.near_half, self.u[:, :, None, None]), nan=FAR)
+        self.near_true = np.minimum(true, 179.9) if axis.is_angle else true
+        zero, displacement = self.phi[:, 0, None, None, None], self.phi[:, 1, None, None, None]
+        self.near_basis = axis.displacement_basis(self.near_true)
+        self.near_x = np.where(true < FAR, true + zero + displacement * self.near_basis, FAR)
 
     def chance_seen(self, ln_share: FloatArray, height: FloatArray, frequency: FloatArray) -> FloatArray:
         """Return p, the chance that a line is seen; `ln_share` broadcasts against `height`."""
@@ -308,7 +319,7 @@ class _Fit:
         axis = self.axis
         weight = self.claims * self.inner / self.sigma2[:, None, :, None]
         weight = weight * np.where(self.near_plain, 1.0, 0.1)
-        basis = axis.displacement_basis(self.near_true)
+        basis = self.near_basis
         slope = axis.slope(self.near_true)
         size = 2 + self.m
         matrix = np.zeros((self.n_sets, size, size))
@@ -383,6 +394,26 @@ class _Fit:
         curvature = (2.0 * share**2 * np.maximum(misfit, 0.3 * weight)).sum(axis=1)
         return gradient, curvature + 1.0 / axis.noise_spread**2
 
+    def centre_shares(self) -> FloatArray:
+        """Return each member's share from the heights of the lines that it claims (n_sets, m)."""
+        observed = self.axis.ln_intensity
+        assert observed is not None
+        plain = np.where(self.near_plain, self.claims, 0.0)
+        weight = plain.sum(axis=(2, 3))
+        gap = observed[None, None, :, None] - self.near_height
+        gap = np.where(np.isfinite(gap), gap, 0.0)
+        centre = (plain * gap).sum(axis=(2, 3)) / np.maximum(weight, 1e-9)
+        centre = np.where(weight > 0.2, centre, self.floor)
+        return np.clip(centre, self.floor - 0.5, 0.3)
+
+    def update_shares(self) -> None:
+        """Set shares between iterations: from heights directly, else from what is seen and what is not."""
+        if self.axis.ln_intensity is None:
+            self.set_shares()
+        else:
+            self.ln_share = self.centre_shares()
+            self.use_heights = True
+
     def set_shares(self) -> FloatArray:
         """Choose each member's share; return the log of its integral relative to the chosen value (n_sets, m)."""
         axis = self.axis
@@ -392,12 +423,7 @@ class _Fit:
             steps = np.broadcast_to(DETECTION_STEPS, (self.n_sets, self.m, len(DETECTION_STEPS)))
             cell = np.log(1.0 / len(DETECTION_STEPS))
         else:
-            weight = plain.sum(axis=(2, 3))
-            gap = axis.ln_intensity[None, None, :, None] - self.near_height
-            gap = np.where(np.isfinite(gap), gap, 0.0)
-            centre = (plain * gap).sum(axis=(2, 3)) / np.maximum(weight, 1e-9)
-            centre = np.where(weight > 0.2, centre, self.floor)
-            centre = np.clip(centre, self.floor - 0.5, 0.3)
+            centre = self.centre_shares()
             steps = centre[..., None] + SHARE_STEPS
             cell = np.log(float(SHARE_STEPS[1] - SHARE_STEPS[0]) / SHARE_RANGE)
         p = self.chance_seen(
@@ -493,10 +519,13 @@ def evaluate(
         rows = slice(start, start + batch)
         fit = _Fit(axis, pool, members[rows], phi[rows], ln_a[rows], ln_sigma[rows])
         for iteration in range(N_ITERATIONS):
-            fit.predict()
+            if iteration in FIND_NEIGHBOURS_AT:
+                fit.predict()
+            else:
+                fit.place_neighbours()
             fit.respond()
-            if iteration % 2 == 0:
-                fit.set_shares()
+            if iteration in SET_SHARES_AT:
+                fit.update_shares()
                 fit.respond()
             fit.step()
         parts.append(fit.finish())

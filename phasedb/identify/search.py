@@ -23,6 +23,7 @@ from phasedb.identify.likelihood import (
     log_student,
 )
 from phasedb.identify.lines import LineTable, make_lines, stack
+from phasedb.identify.result import AxisCurve
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -79,8 +80,9 @@ class Start:
 class Candidates:
     """The growing pool: listed entries by index, unlisted phases by place and pattern."""
 
-    def __init__(self, axis: Axis, entries: Entries) -> None:
+    def __init__(self, axis: Axis, entries: Entries, expected_unlisted: float) -> None:
         self.axis = axis
+        self.expected_unlisted = expected_unlisted
         self.entries = entries
         self._tables: list[LineTable] = []
         self._stacked: Pool | None = None
@@ -125,7 +127,7 @@ class Candidates:
             patterns = archetypes(name, float(np.exp(ln_a)))
             places = np.full(len(patterns), ln_a)
             self._tables.append(make_lines(self.axis, places, [(n, s) for _, n, s in patterns]))
-            density = np.log(EXPECTED_UNLISTED * UNLISTED_LATTICE[name] / LN_A_SPAN)
+            density = np.log(self.expected_unlisted * UNLISTED_LATTICE[name] / LN_A_SPAN)
             numbers = []
             for pattern, (ln_weight, _, _) in enumerate(patterns):
                 numbers.append(len(self._columns))
@@ -153,11 +155,19 @@ class Search:
     """One search over sets of phases for one list."""
 
     def __init__(
-        self, axis: Axis, entries: Entries, most_phases: int, *, always: tuple[int, ...] = ()
+        self,
+        axis: Axis,
+        entries: Entries,
+        most_phases: int,
+        *,
+        always: tuple[int, ...] = (),
+        places_of_each_lattice: int = N_UNLISTED,
+        expected_unlisted: float = EXPECTED_UNLISTED,
     ) -> None:
         self.axis = axis
         self.entries = entries
-        self.candidates = Candidates(axis, entries)
+        self.candidates = Candidates(axis, entries, expected_unlisted)
+        self.n_places = places_of_each_lattice
         self.most_phases = most_phases
         self.always = tuple(self.candidates.add_entries(always))
         self.empty = empty_log_likelihood(axis)
@@ -253,7 +263,7 @@ class Search:
         n_unlisted = sum(self.candidates.entry_of[member] < 0 for member in known)
         if n_unlisted < 2:
             for lattice in range(3):
-                for score, ln_a, cell in peaks_of(curves, lattice, most=N_UNLISTED, separation=SAME_PLACE):
+                for score, ln_a, cell in peaks_of(curves, lattice, most=self.n_places, separation=SAME_PLACE):
                     near = [
                         member
                         for member, value in zip(known, known_ln_a, strict=True)
@@ -415,6 +425,27 @@ class Search:
                     continue
                 starts += [start for _, start in self._propose(rest, N_NEXT)]
             self._evaluate(starts)
+
+    def axis_curves(self, points: int = 1600) -> tuple[AxisCurve, ...]:
+        """Return the first votes, the best over shift and noise, thinned for a figure."""
+        curves = self.first_curves
+        if not curves:
+            return ()
+        start = min(curve.start for curve in curves)
+        stop = max(curve.start + curve.step * (curve.values.shape[1] - 1) for curve in curves)
+        places = np.linspace(start, stop, points)
+        width = places[1] - places[0]
+        made = []
+        for row, lattice in enumerate(LATTICE_TYPES):
+            top = np.full(points, -np.inf)
+            for curve in curves:
+                grid = curve.start + curve.step * np.arange(curve.values.shape[1])
+                index = np.clip(np.rint((grid - start) / width).astype(np.int64), 0, points - 1)
+                np.maximum.at(top, index, curve.values[row] + curve.cell.ln_prior)
+            known = np.isfinite(top)
+            ln_a = tuple(np.round(places[known], 5).tolist())
+            made.append(AxisCurve(lattice, ln_a, tuple(np.round(top[known], 3).tolist())))
+        return tuple(made)
 
     def sets(self) -> Iterator[Fitted]:
         """Yield all evaluated sets."""
