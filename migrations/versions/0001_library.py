@@ -82,12 +82,12 @@ def upgrade() -> None:
         sa.Column("how", sa.Text(), nullable=False),
         sa.Column("a_angstrom", sa.Double(), nullable=True),
         sa.Column("density_g_cm3", sa.Double(), nullable=True),
+        sa.ForeignKeyConstraint(["phase_id"], ["phase.id"], name="fk_source_phase_id_phase"),
         sa.CheckConstraint(
             "kind IN ('standard', 'handbook', 'paper', 'data package', 'measured here', 'from memory')",
             name="ck_source_kind",
         ),
         sa.PrimaryKeyConstraint("phase_id", "position", name="pk_source"),
-        sa.ForeignKeyConstraint(["phase_id"], ["phase.id"], name="fk_source_phase_id_phase"),
     )
     op.create_table(
         "alias",

@@ -46,8 +46,8 @@ def upgrade() -> None:
         sa.Column("entered_by", sa.Text(), nullable=False),
         sa.Column("entered_at", sa.Text(), nullable=False),
         sa.PrimaryKeyConstraint("id", name="pk_measurement"),
-        sa.UniqueConstraint("uid", name="uq_measurement_uid"),
         sa.ForeignKeyConstraint(["phase_id"], ["phase.id"], name="fk_measurement_phase_id_phase"),
+        sa.UniqueConstraint("uid", name="uq_measurement_uid"),
     )
     op.create_index("ix_measurement_phase_id", "measurement", ["phase_id"])
     op.create_table(
@@ -72,12 +72,18 @@ def upgrade() -> None:
     )
     op.create_table(
         "signature",
+        sa.Column("id", sa.Integer(), nullable=False),
+        sa.Column("uid", sa.String(32), nullable=False),
         sa.Column("identification_id", sa.Integer(), nullable=False),
         sa.Column("signed_by_key", sa.Text(), nullable=False),
         sa.Column("signed_by", sa.Text(), nullable=False),
         sa.Column("signed_at", sa.Text(), nullable=False),
         sa.Column("remark", sa.Text(), nullable=False),
-        sa.PrimaryKeyConstraint("identification_id", "signed_by_key", name="pk_signature"),
+        sa.PrimaryKeyConstraint("id", name="pk_signature"),
+        sa.UniqueConstraint("uid", name="uq_signature_uid"),
+        sa.UniqueConstraint(
+            "identification_id", "signed_by_key", name="uq_signature_identification_id_signed_by_key"
+        ),
         sa.ForeignKeyConstraint(
             ["identification_id"],
             ["identification.id"],

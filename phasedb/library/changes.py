@@ -59,8 +59,8 @@ class WarningsRefusedError(RuleRefusedError):
         lines = "".join(f"\n  - {warning.text}" for warning in warnings)
         count = "a warning" if len(warnings) == 1 else f"{len(warnings)} warnings"
         super().__init__(
-            f"{name!r} was not written, because of {count}:{lines}\n",
-            hint="correct the value, or accept with --accept-warning (the history records it)",
+            f"{name!r} was not written, because of {count}; correct the value, or accept with "
+            f"--accept-warning (the history records it):{lines}"
         )
         self.warnings = tuple(warnings)
 
@@ -74,7 +74,7 @@ def document_of(entry: Entry) -> dict[str, Any]:
     return compact(entry_to_json(entry))
 
 
-# --- entering ------------------------------------------------------------------------------------------------
+# --- entering -------------------------------------------------------------------------------------
 
 
 def add(
@@ -202,7 +202,7 @@ def refuse_taken_names(connection: Connection, content: Draft, *, own_id: int | 
             raise _name_taken(name, content.name)
 
 
-# --- changing ------------------------------------------------------------------------------------------------
+# --- changing -------------------------------------------------------------------------------------
 
 
 def revise(
@@ -216,8 +216,8 @@ def revise(
 ) -> Outcome:
     """Change some fields of an entry (attributes of `Draft`) and add one to its version.
 
-    A change of what a check vouches for (`CHECKED_FIELDS`) makes a checked entry a draft again. Sites given in
-    `new` are kept as they are; otherwise they follow from the structure type and the formula.
+    A change of what a check vouches for (`CHECKED_FIELDS`) makes a checked entry a draft again. Sites given
+    in `new` are kept as they are; otherwise they follow from the structure type and the formula.
 
     Raises
     ------

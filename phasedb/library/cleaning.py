@@ -57,9 +57,7 @@ def clean_text(text: str, *, what: str) -> str:
     text = unicodedata.normalize("NFC", text.replace("\r\n", "\n").replace("\r", "\n")).strip()
     for character in text:
         if character not in "\n\t" and unicodedata.category(character) in ("Cc", "Cs"):
-            raise InputError(
-                f"the {what} holds a control character ({character!a})", hint="leave it out"
-            )
+            raise InputError(f"the {what} holds a control character ({character!a})", hint="leave it out")
     return text
 
 

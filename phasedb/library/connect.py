@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import sqlite3
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
@@ -72,7 +72,7 @@ def check_file(path: Path) -> None:
         raise StoreError(
             "the store is an empty file (zero length)",
             where=str(path),
-            hint="restore a backup with 'phasedb restore FILE --replace', or delete it and run 'phasedb init'",
+            hint="restore a backup (phasedb restore FILE --replace), or delete it and run 'phasedb init'",
         )
     if head != SQLITE_MAGIC:
         raise StoreError(
@@ -113,12 +113,12 @@ def open_sqlite(path: Path, *, write: bool) -> sqlite3.Connection:
     return connection
 
 
-def sqlite_engine(connect: object) -> Engine:
+def sqlite_engine(connect: Callable[[], sqlite3.Connection]) -> Engine:
     """Return an engine over `connect()`, with explicit BEGIN (IMMEDIATE for writes)."""
     import sqlalchemy as sa
     from sqlalchemy.pool import NullPool
 
-    engine = sa.create_engine("sqlite://", creator=connect, poolclass=NullPool)  # type: ignore[arg-type]
+    engine = sa.create_engine("sqlite://", creator=connect, poolclass=NullPool)
 
     @sa.event.listens_for(engine, "begin")
     def _begin(connection: Connection) -> None:

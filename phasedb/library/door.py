@@ -101,8 +101,12 @@ def _neighbours(connection: Connection, prepared: Prepared, own_id: int | None) 
         elif abs(difference) <= limit:
             near.append((not same, abs(difference), difference, row))
     near.sort(key=lambda item: (item[0], item[1], item[3].name))
-    for _, _, difference, row in near[:_NAMED_AT_MOST]:
-        found.append(Warned("near", near_text(content, row.name, row.formula, row.a_angstrom, difference)))
+    for other, _, difference, row in near[:_NAMED_AT_MOST]:
+        found.append(
+            Warned(
+                "near", near_text(content, row.name, row.formula, row.a_angstrom, difference, same=not other)
+            )
+        )
     if len(near) > _NAMED_AT_MOST:
         found.append(Warned("near", f"{len(near) - _NAMED_AT_MOST} more entries lie as close"))
     return found
@@ -125,11 +129,11 @@ def kx_text(content: Draft, other: str, difference: float) -> str:
     )
 
 
-def near_text(content: Draft, other: str, formula: str, a: float, difference: float) -> str:
-    relation = "of the same lattice type"
+def near_text(content: Draft, other: str, formula: str, a: float, difference: float, *, same: bool) -> str:
+    likely = "the same phase entered twice?" if same else "line positions alone will not tell them apart"
     return (
-        f"{content.a_angstrom:.10g} Å is close to {other!r} ({formula}, {a:.10g} Å, {relation}; "
-        f"{100 * difference:+.3f} %): the same phase entered twice?"
+        f"{content.a_angstrom:.10g} Å is within {100 * abs(difference):.3f} % of {other!r} "
+        f"({formula}, {content.lattice_type}, {a:.10g} Å): {likely}"
     )
 
 

@@ -32,6 +32,7 @@ TEXT_FIELDS: Final = (
     "space_group_number",
     "temperature_K",
     "thermal_expansion_per_k",
+    "thermal_expansion_source",
     "free_parameters",
     "formula_units_per_cell",
     "drift_class",
@@ -53,7 +54,7 @@ TEXT_FIELDS: Final = (
     "second_how",
     "diff_percent",
 )
-"""Columns that a text table may have; space_group_number and diff_percent follow from others and are not kept."""
+"""Columns that a text table may have; space_group_number and diff_percent follow from others."""
 
 
 class FieldError(InputError):
@@ -148,7 +149,36 @@ def drift_class_from(text: str) -> DriftClass:
 
 
 # Everything else counts as a metal here: what matters is whether metals replace each other freely.
-_NOT_METALS: Final = frozenset(["H", "D", "T", "He", "B", "C", "N", "O", "F", "Ne", "Si", "P", "S", "Cl", "Ar", "Ge", "As", "Se", "Br", "Kr", "Sb", "Te", "I", "Xe", "At", "Rn"])
+_NOT_METALS: Final = frozenset(
+    [
+        "H",
+        "D",
+        "T",
+        "He",
+        "B",
+        "C",
+        "N",
+        "O",
+        "F",
+        "Ne",
+        "Si",
+        "P",
+        "S",
+        "Cl",
+        "Ar",
+        "Ge",
+        "As",
+        "Se",
+        "Br",
+        "Kr",
+        "Sb",
+        "Te",
+        "I",
+        "Xe",
+        "At",
+        "Rn",
+    ]
+)
 
 
 def likely_drift_class(formula: str) -> tuple[DriftClass, str]:

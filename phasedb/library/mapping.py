@@ -78,7 +78,7 @@ def insert_entries(connection: Connection, entries: Sequence[Entry], checksums: 
     found = connection.execute(
         sa.select(tables.phase.c.uid, tables.phase.c.id).where(tables.phase.c.id > last)
     )
-    id_of = {uid: number for uid, number in found}
+    id_of = {row.uid: row.id for row in found}
     ids = [id_of[entry.uid] for entry in entries]
     gathered: dict[sa.Table, list[dict[str, Any]]] = defaultdict(list)
     for entry, phase_id in zip(entries, ids, strict=True):

@@ -27,7 +27,7 @@ _ROWS_AT_ONCE: Final = 5000
 
 
 def replay(rows: Iterable[tuple[str, str, str | None]]) -> dict[tuple[str, str], str]:
-    """Return the last state (canonical JSON) of each thing, from (kind, key, after) of history rows in order."""
+    """Return the last state (canonical JSON) of each thing; rows are (kind, key, after) in order."""
     states: dict[tuple[str, str], str] = {}
     for kind, key, after in rows:
         if after is None:

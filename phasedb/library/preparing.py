@@ -77,7 +77,7 @@ def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
         a_text=clean_text(draft.a_text, what="lattice constant"),
         temperature_k=within(draft.temperature_k, 0.1, 5000, what="temperature", unit="K"),
         expansion_per_k=within(draft.expansion_per_k, -1e-3, 1e-3, what="thermal expansion", unit="1/K"),
-        structure_type=_canonical_type(draft.structure_type),
+        structure_type=canonical_type(draft.structure_type),
         free_parameters=clean_text(draft.free_parameters, what="free parameters"),
         space_group=clean_text(draft.space_group, what="space group"),
         formula_units_per_cell=within(
@@ -100,7 +100,7 @@ def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
     return Prepared(content, formula.elements, formula.reduced, problem)
 
 
-def _canonical_type(text: str | None) -> str | None:
+def canonical_type(text: str | None) -> str | None:
     if text is None or not text.strip():
         return None
     label = clean_name(text, what="structure type")

@@ -22,6 +22,7 @@ Lines = tuple[NDArray[np.int32], NDArray[np.float64]]
 METHOD: Final = 1
 """Which way of computing line strengths a cached value came from; raise it when the computation changes."""
 
+_NO_LINES: Final[Lines] = (np.zeros(0, dtype=np.int32), np.zeros(0, dtype=np.float64))
 _LATTICE_CODE: Final = {name: code for code, name in enumerate(LATTICE_TYPES)}
 _DRIFT_CODE: Final = {name: code for code, name in enumerate(DRIFT_CLASSES)}
 
@@ -109,7 +110,7 @@ def _table(connection: Connection, rows: Sequence[Any]) -> PhaseTable:
             computed.get(row.id) if known is None else known for row, known in zip(rows, lines, strict=True)
         ]
     counts = [0 if known is None else len(known[0]) for known in lines]
-    given = [known for known in lines if known is not None]
+    given = [_NO_LINES, *(known for known in lines if known is not None)]
     return PhaseTable(
         name=tuple(row.name for row in rows),
         formula=tuple(row.formula for row in rows),
@@ -126,12 +127,12 @@ def _table(connection: Connection, rows: Sequence[Any]) -> PhaseTable:
         elements=tuple(tuple(row.elements.split()) for row in rows),
         is_starter=np.array([bool(row.is_starter) for row in rows], dtype=np.bool_),
         line_start=np.concatenate([[0], np.cumsum(counts)]).astype(np.int64),
-        line_n=np.concatenate([known[0] for known in given] or [[]]).astype(np.int32),
-        line_strength=np.concatenate([known[1] for known in given] or [[]]).astype(np.float64),
+        line_n=np.concatenate([known[0] for known in given]).astype(np.int32),
+        line_strength=np.concatenate([known[1] for known in given]).astype(np.float64),
     )
 
 
-# --- line strengths ------------------------------------------------------------------------------------------
+# --- line strengths -------------------------------------------------------------------------------
 
 
 def lines_of(phase: Phase) -> Lines | None:

@@ -14,7 +14,8 @@ _YEAR_IN_BRACKETS = re.compile(r"\((1[89]\d\d|20\d\d)\)")
 _YEAR = re.compile(r"(?<![\d.])(1[89]\d\d|20\d\d)(?![\d]|\.\d)")
 _DOI = re.compile(r"\bdoi:\s*(10\.\d{4,9}/[^\s;,]+)", re.IGNORECASE)
 _JOURNAL = re.compile(
-    r"\bet al\b|\bjournal\b|\bacta\b|\bphys|\bzeitschrift|\bmineral|\bchem|\bproceedings|\bnational bureau|\bfiat\b|\breview"
+    r"\bet al\b|\bjournal\b|\bacta\b|\bphys|\bzeitschrift|\bmineral|\bchem|\bproceedings"
+    r"|\bnational bureau|\bfiat\b|\breview"
 )
 
 
@@ -77,7 +78,7 @@ def cited_source(
     a_angstrom: float | None = None,
     density_g_cm3: float | None = None,
 ) -> Source:
-    """Return the source of a citation; year, DOI and kind are read from its words where they are not given."""
+    """Return the source of a citation; year, DOI and kind are read from it where not given."""
     if kind and kind not in SOURCE_KINDS:
         raise InputError(
             f"source kind {kind!r} is not known", hint="expected one of " + ", ".join(SOURCE_KINDS)
@@ -98,7 +99,7 @@ def cited_source(
 def sources_from_fields(
     fields: Mapping[str, str], number: Callable[[str], float | None], length: Callable[[str], float | None]
 ) -> tuple[Source, ...]:
-    """Return the source of a row, and its second source with the value that it gives."""
+    """Return the sources of a row: of its a, the second one with its own value, and of its expansion."""
     found = []
     citation, doi = fields.get("source", ""), fields.get("doi", "")
     density = number("source_density_g_cm3")
@@ -122,4 +123,6 @@ def sources_from_fields(
                 a_angstrom=length("second_value_angstrom"),
             )
         )
+    if fields.get("thermal_expansion_source"):
+        found.append(cited_source(f"thermal expansion: {fields['thermal_expansion_source']}"))
     return tuple(found)

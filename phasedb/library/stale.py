@@ -45,6 +45,5 @@ def stale_edit(
         f"{entry.name!r} is at version {entry.version}, not {expected}: changed by {last_by} at {last_at}"
         f"\n  from version {expected} to {entry.version}:{lines}"
         + (f"\n  your change, not made:{yours}" if yours else "")
-        + "\n ",
-        hint=f"look at it again, then give --expect-version {entry.version}",
+        + f"\n  look at it again, then give --expect-version {entry.version}"
     )

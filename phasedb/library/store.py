@@ -46,7 +46,7 @@ class Library:
             self._connection = engine.connect()
             self._write_connection: Connection | None = None
 
-    # --- opening and closing ---------------------------------------------------------------------------------
+    # --- opening and closing ----------------------------------------------------------------------
 
     @classmethod
     def open(
@@ -129,7 +129,7 @@ class Library:
     def __exit__(self, *exc_info: object) -> None:
         self.close()
 
-    # --- transactions ----------------------------------------------------------------------------------------
+    # --- transactions -----------------------------------------------------------------------------
 
     @contextmanager
     def reading(self) -> Iterator[Connection]:
@@ -170,7 +170,7 @@ class Library:
                 finally:
                     self._writing = None
 
-    # --- reading ---------------------------------------------------------------------------------------------
+    # --- reading ----------------------------------------------------------------------------------
 
     def _state(self, column: str) -> Any:
         with self.reading() as connection:
@@ -291,7 +291,7 @@ class Library:
         with self.reading() as connection:
             return finding.history_rows(connection, name)
 
-    # --- changing --------------------------------------------------------------------------------------------
+    # --- changing ---------------------------------------------------------------------------------
 
     def add(self, draft: Draft, *, accept_warnings: bool = False, keep_sites: bool = False) -> Outcome:
         """Enter a phase as a draft; see `phasedb.library.changes.add`."""

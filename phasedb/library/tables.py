@@ -246,12 +246,18 @@ identification = sa.Table(
 signature = sa.Table(
     "signature",
     metadata,
+    sa.Column("id", sa.Integer(), nullable=False),
+    sa.Column("uid", sa.String(32), nullable=False),
     sa.Column("identification_id", sa.Integer(), nullable=False),
     _text("signed_by_key"),
     _text("signed_by"),
     _text("signed_at"),
     _text("remark"),
-    sa.PrimaryKeyConstraint("identification_id", "signed_by_key", name="pk_signature"),
+    sa.PrimaryKeyConstraint("id", name="pk_signature"),
+    sa.UniqueConstraint("uid", name="uq_signature_uid"),
+    sa.UniqueConstraint(
+        "identification_id", "signed_by_key", name="uq_signature_identification_id_signed_by_key"
+    ),
     sa.ForeignKeyConstraint(
         ["identification_id"], ["identification.id"], name="fk_signature_identification_id_identification"
     ),

@@ -20,7 +20,7 @@ _MODULUS: Final = 1 << 256
 
 
 def fingerprint_of(checksums: Any) -> str:
-    """Return the library fingerprint: the sum of the checksums modulo 2**256, in hex; order does not matter."""
+    """Return the library fingerprint: the sum of the checksums modulo 2**256, in hex."""
     return f"{sum(int(checksum, 16) for checksum in checksums) % _MODULUS:064x}"
 
 

@@ -1,0 +1,55 @@
+"""Plain aligned tables and wrapped text: no colour, nothing cut off when piped."""
+
+from __future__ import annotations
+
+import shutil
+import sys
+import textwrap
+import unicodedata
+from collections.abc import Sequence
+
+
+def text_width(text: str) -> int:
+    """Return how many columns `text` takes on a terminal."""
+    return sum(
+        0 if unicodedata.combining(char) else 2 if unicodedata.east_asian_width(char) in "WF" else 1
+        for char in text
+    )
+
+
+def page_width() -> int:
+    """Return the width to wrap at: the terminal's, 80 when piped."""
+    return min(shutil.get_terminal_size((80, 24)).columns, 120) if sys.stdout.isatty() else 80
+
+
+def aligned(heads: Sequence[str], rows: Sequence[Sequence[str]], *, right: Sequence[int] = ()) -> list[str]:
+    """Return the lines of a table; columns in `right` are set flush right."""
+    table = [list(heads), *(list(row) for row in rows)]
+    widths = [max(text_width(row[i]) for row in table) for i in range(len(heads))]
+    lines = []
+    for row in table:
+        cells = []
+        for i, cell in enumerate(row):
+            gap = " " * (widths[i] - text_width(cell))
+            cells.append(gap + cell if i in right else cell + gap)
+        lines.append("  ".join(cells).rstrip())
+    return lines
+
+
+def labelled(pairs: Sequence[tuple[str, str]], *, indent: int = 0) -> list[str]:
+    """Return ``label  text`` lines, the text wrapped under itself; pairs without text are left out."""
+    kept = [(label, text) for label, text in pairs if text]
+    column = max((text_width(label) for label, _ in kept), default=0) + 2
+    lines = []
+    for label, text in kept:
+        first = " " * indent + label + " " * (column - text_width(label))
+        wrapped = textwrap.wrap(
+            text,
+            width=max(page_width(), column + 30),
+            initial_indent=first,
+            subsequent_indent=" " * (indent + column),
+            break_long_words=False,
+            break_on_hyphens=False,
+        )
+        lines += wrapped or [first.rstrip()]
+    return lines
