@@ -1,1 +1,1 @@
-"""The accuracy study of the matcher: simulated lists with known truth, rivals, figures (`python -m study.run`)."""
+"""The accuracy study of the matcher: lists with known truth, rivals, figures (`python -m study.run`)."""

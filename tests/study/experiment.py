@@ -1,4 +1,4 @@
-"""The experiment behind a list: radiation, range, width, shifts, noise, floor, and how the list is written."""
+"""The experiment behind a list: radiation, range, shifts, noise, floor, and how the list is written."""
 
 from __future__ import annotations
 
@@ -38,8 +38,8 @@ class Experiment:
     """Everything about the measurement that is not the sample.
 
     `physical_alpha1` (Å) is what the tube really gives; `declared` is what the list says. `floor` is the
-    weakest line seen over the strongest; `lost` the chance that any line is missing all the same; `resolution`
-    the distance, in widths, below which two lines are one.
+    weakest line seen over the strongest; `lost` the chance that any line is missing all the same;
+    `resolution` the distance, in widths, below which two lines are one.
     """
 
     emission: EmissionLines
@@ -149,7 +149,7 @@ def draw_noise(rng: np.random.Generator, width_deg: float) -> float:
 
 
 def clean(anode: str = "Cu", low: float = 20.0, high: float = 100.0, **changes: object) -> Experiment:
-    """Return a well-aligned measurement with one wavelength (K-alpha1) and nothing odd; `changes` make it odd."""
+    """Return a well-aligned measurement with K-alpha1 alone and nothing odd; `changes` make it odd."""
     plain = Experiment(
         emission=EMISSION_LINES[anode],
         declared=radiation_from_name(anode + "-Ka1"),

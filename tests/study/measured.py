@@ -1,13 +1,15 @@
 """Measured lists from other laboratories, and published line tables: how an answer is judged.
 
-``python -m study.measured`` (from ``tests/``) prints the answer to every list, with and without its elements.
+``python -m study.measured`` (from ``tests/``) prints the answer to every list, with and without its
+elements.
 
-The rule is the design's: right if every name in `listed` (or an `acceptable` one, or their group) is claimed and
-nothing wrong is; an unlisted claim is right if its lattice type agrees with a true phase and a lies within 0.5 % of it,
-or within the list's own tolerance where that is wider; where the source gives no lattice constant, within the range
-that `expected` states (`STATED_RANGE`). Where the sample's phase is in no library, the best answer is an unlisted claim; no
-claim at all is an honest answer too and counts as right, since nothing wrong was said; `is_named` tells the two
-apart, and the tests ask for the claim itself where the list is good enough.
+The rule is the design's: right if every name in `listed` (or an `acceptable` one, or their group) is
+claimed and nothing wrong is; an unlisted claim is right if its lattice type agrees with a true phase and a
+lies within 0.5 % of it, or within the list's own tolerance where that is wider; where the source gives no
+lattice constant, within the range that `expected` states (`STATED_RANGE`). Where the sample's phase is in
+no library, the best answer is an unlisted claim; no claim at all is an honest answer too and counts as
+right, since nothing wrong was said; `is_named` tells the two apart, and the tests ask for the claim itself
+where the list is good enough.
 """
 
 from __future__ import annotations
@@ -91,7 +93,7 @@ def measured_elements(record: dict[str, Any]) -> tuple[str, ...] | None:
 def judge_measured(record: dict[str, Any], match: Match) -> Judgement:
     """Return the judgement of a match of a measured list."""
     names = [*record["listed"], *record["acceptable"]]
-    groups = {name for name in names}
+    groups = set(names)
     for result in match.phases:
         members = {result.name, *result.look_alikes}
         if members & set(names):
@@ -126,7 +128,7 @@ def agrees(record: dict[str, Any], lattice: str, a: float) -> bool:
     return stated is not None and lattice == stated[0] and stated[1] * 0.995 <= a <= stated[2] * 1.005
 
 
-# --- published line tables ---------------------------------------------------------------------------------------
+# --- published line tables ------------------------------------------------------------------------
 
 
 @dataclass(frozen=True, slots=True)
@@ -140,7 +142,7 @@ class LineTable:
 
 
 def published_tables() -> list[LineTable]:
-    """Return the published tables of four lines or more, with the wavelength only where the source prints one."""
+    """Return the published tables of four lines or more, a wavelength only where the source prints one."""
     tables: dict[str, list[dict[str, str]]] = {}
     with (DATA / "published_line_tables.csv").open(encoding="utf-8") as file:
         for row in csv.DictReader(file):

@@ -1,16 +1,16 @@
 """Figures of the study, as the design defines them: found, wrong claims, honesty of the probabilities.
 
-A *claim* is a listed or unlisted phase with p > 0.5. It is wrong if the sample does not hold it or a look-alike
-of it (`study.oracle`); an unlisted claim is right if the lattice type agrees with a phase of the sample and a lies
-within 0.5 %.
+A *claim* is a listed or unlisted phase with p > 0.5. It is wrong if the sample does not hold it or a
+look-alike of it (`study.oracle`); an unlisted claim is right if the lattice type agrees with a phase of the
+sample and a lies within 0.5 %.
 
-*Found in the top n*: the n listed phases of the sample are looked for among the first n of the ranking. Strict: by
-name. Counting look-alikes: an entry that cannot be told from a true phase stands for it, and a second entry of the
-same group takes no place in the ranking.
+*Found in the top n*: the n listed phases of the sample are looked for among the first n of the ranking.
+Strict: by name. Counting look-alikes: an entry that cannot be told from a true phase stands for it, and a
+second entry of the same group takes no place in the ranking.
 
-*Honesty* is measured on every p >= 0.05: strict (a listed p is right if the sample holds that very entry; an unlisted p
-if the sample holds a phase that the library lacks, of that lattice type and a), by the rule for claims, and for
-`group_probability` (one for each group).
+*Honesty* is measured on every p >= 0.05. Of an entry: right if the sample holds that very entry; of the
+unlisted phase: right if the sample holds a phase that the library lacks, of that lattice type and a. Of a
+group (`group_probability`, once for each group): right if a phase of the sample, or a look-alike of one, is in it.
 """
 
 from __future__ import annotations
@@ -43,16 +43,21 @@ class ListScore:
     right_claims: tuple[str, ...]
     wrong_claims: tuple[str, ...]
     missed: tuple[str, ...]
-    pairs_strict: tuple[tuple[float, bool], ...]
-    pairs_rule: tuple[tuple[float, bool], ...]
+    pairs_entry: tuple[tuple[float, bool], ...]
     pairs_group: tuple[tuple[float, bool], ...]
     shift_inside: tuple[bool, ...]
     seconds: float
     fault: str = ""
 
+    @classmethod
+    def failed(cls, case: Case, fault: str) -> ListScore:
+        """Return the score of a list on which the matcher raised an error: nothing found."""
+        missed = tuple(phase.name for phase in case.truth.phases if not phase.removed)
+        return cls(case.truth.seed, len(missed), 0, 0, 0, 0.0, (), (), missed, (), (), (), 0.0, fault)
+
 
 def score(case: Case, match: Match, verdicts: Sequence[Verdict], seconds: float) -> ListScore:
-    """Return the figures of one list; `verdicts` holds the oracle's view of each true phase, in their order."""
+    """Return the figures of one list; `verdicts`: the oracle's view of each true phase, in order."""
     truth = case.truth
     listed = [
         (phase, verdict) for phase, verdict in zip(truth.phases, verdicts, strict=True) if not phase.removed
@@ -65,15 +70,15 @@ def score(case: Case, match: Match, verdicts: Sequence[Verdict], seconds: float)
     top = set(ranking[: len(listed)])
     stand_ins = found_with_look_alikes(ranking, listed)
     right, wrong = [], []
-    strict, rule, group = [], [], []
+    entry: list[tuple[float, bool]] = []
+    group: list[tuple[float, bool]] = []
     counted: set[str] = set()
     for result in match.phases:
         label = f"{result.name} p={result.probability:.3f}"
         good = result.name in alike
         if result.probability > CLAIM:
             (right if good else wrong).append(label)
-        strict.append((result.probability, result.name in present))
-        rule.append((result.probability, good))
+        entry.append((result.probability, result.name in present))
         if result.name not in counted:
             group.append((result.group_probability, good or bool(alike & set(result.look_alikes))))
             counted |= {result.name, *result.look_alikes}
@@ -84,12 +89,11 @@ def score(case: Case, match: Match, verdicts: Sequence[Verdict], seconds: float)
         label = f"unlisted {best.lattice_type} {best.a_angstrom:.4f} p={p:.3f}"
         if p > CLAIM:
             (right if holder is not None else wrong).append(label)
-        strict.append((p, holder is not None and holder.removed))
-        rule.append((p, holder is not None))
+        entry.append((p, holder is not None and holder.removed))
         group.append((p, holder is not None and holder.removed))
     elif p > 0.0:
         lacking = any(phase.removed for phase in truth.phases)
-        for pairs in (strict, rule, group):
+        for pairs in (entry, group):
             pairs.append((p, lacking))
     claimed = {name.rsplit(" p=", 1)[0] for name in right}
     missed = tuple(
@@ -107,8 +111,7 @@ def score(case: Case, match: Match, verdicts: Sequence[Verdict], seconds: float)
         right_claims=tuple(right),
         wrong_claims=tuple(wrong),
         missed=missed,
-        pairs_strict=_above(strict),
-        pairs_rule=_above(rule),
+        pairs_entry=_above(entry),
         pairs_group=_above(group),
         shift_inside=shift_inside(case, match),
         seconds=seconds,
@@ -135,7 +138,7 @@ def found_with_look_alikes(ranking: Sequence[str], listed: Sequence[tuple[TruePh
 
 
 def holds_unlisted(phases: Sequence[TruePhase], lattice: str, a: float) -> TruePhase | None:
-    """Return the phase of the sample that an unlisted claim agrees with, a removed one before a listed one."""
+    """Return the phase of the sample that an unlisted claim agrees with, a removed one first."""
     fitting = [
         phase
         for phase in phases
@@ -145,7 +148,7 @@ def holds_unlisted(phases: Sequence[TruePhase], lattice: str, a: float) -> TrueP
 
 
 def shift_inside(case: Case, match: Match) -> tuple[bool, ...]:
-    """Return, for each line claimed by a true phase, whether the true shift lies within 2 esd of the found one."""
+    """Return, for each line claimed by a true phase, whether the true shift is within 2 esd."""
     shift = match.shift
     if shift.at_lines_deg is None or shift.at_lines_esd_deg is None:
         return ()
@@ -165,11 +168,11 @@ def _above(pairs: Sequence[tuple[float, bool]]) -> tuple[tuple[float, bool], ...
     return tuple((float(p), bool(right)) for p, right in pairs if p >= LEAST_PROBABILITY)
 
 
-# --- over many lists --------------------------------------------------------------------------------------------
+# --- over many lists ------------------------------------------------------------------------------
 
 
 def calibration_error(p: NDArray[np.float64], right: NDArray[np.bool_], bins: int = 10) -> float:
-    """Return the expected calibration error: mean |stated - seen| over equal-count bins, weighted by count."""
+    """Return the expected calibration error: mean |stated - seen| over equal-count bins."""
     if not len(p):
         return float("nan")
     order = np.argsort(p, kind="stable")
@@ -216,7 +219,7 @@ def bootstrap(
 
 
 def pooled(scores: Sequence[ListScore], kind: str) -> tuple[NDArray[np.float64], NDArray[np.bool_]]:
-    """Return all pairs of one kind (``strict``, ``rule`` or ``group``) as two arrays."""
+    """Return all pairs of one kind (``entry`` or ``group``) as two arrays."""
     pairs = [pair for one in scores for pair in getattr(one, f"pairs_{kind}")]
     return np.array([p for p, _ in pairs], dtype=float), np.array([right for _, right in pairs], dtype=bool)
 
@@ -225,6 +228,13 @@ def share(scores: Sequence[ListScore], field: str) -> float:
     """Return the share of listed phases for which `field` counts."""
     total = sum(one.n_listed for one in scores)
     return sum(getattr(one, field) for one in scores) / total if total else float("nan")
+
+
+def claimed_share(scores: Sequence[ListScore]) -> float:
+    """Return the share of listed phases that were claimed, by themselves or by a look-alike."""
+    total = sum(one.n_listed for one in scores)
+    missed = sum(len(one.missed) for one in scores)
+    return 1.0 - missed / total if total else float("nan")
 
 
 def wrong_per_list(scores: Sequence[ListScore]) -> float:

@@ -1,8 +1,9 @@
 """Samples that hold no cubic phase: powder lines of published structures, by a small general calculator.
 
-Cells and coordinates were read in the American Mineralogist Crystal Structure Database (through the data file of the
-larixite 2026.1.0 package), whose own references stand beside each; the tetragonal zirconia is from memory.
-Structure factors are summed with gemmi (form factors of International Tables C, neutral atoms).
+Cells and coordinates were read in the American Mineralogist Crystal Structure Database (through the data
+file of the larixite 2026.1.0 package), whose own references stand beside each; the tetragonal zirconia is
+from memory. Structure factors are summed with gemmi (form factors of International Tables C, neutral
+atoms).
 """
 
 from __future__ import annotations
@@ -25,7 +26,7 @@ D_MIN = 0.6
 
 @dataclass(frozen=True, slots=True)
 class Crystal:
-    """A crystal structure: cell (Å, degrees), space group with its setting, atoms, and where it was published."""
+    """A crystal structure: cell (Å, degrees), space group with its setting, atoms, source."""
 
     name: str
     cell: tuple[float, float, float, float, float, float]
@@ -142,7 +143,7 @@ CRYSTALS = (
 
 @lru_cache(maxsize=64)
 def powder_lines(name: str) -> tuple[FloatArray, FloatArray]:
-    """Return d (Å, descending) and multiplicity times |F|² of every reflection of a crystal down to `D_MIN`."""
+    """Return d (Å, descending) and multiplicity times |F|² of every line of a crystal down to `D_MIN`."""
     crystal = next(one for one in CRYSTALS if one.name == name)
     small = gemmi.SmallStructure()
     small.cell = gemmi.UnitCell(*crystal.cell)

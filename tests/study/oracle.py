@@ -1,9 +1,9 @@
-"""What the best possible reading of a list could say: the ceiling for naming one entry, and the look-alikes.
+"""What the best possible reading of a list could say: the ceiling for naming an entry, look-alikes.
 
-The oracle is given the true shift, noise scale, width, floor, shares, the other phases with their true lattice
-constants, and the drift distribution of each class. It puts every entry in the place of one true phase, at
-the lattice constants that lay its lines on the true ones, and compares evidence. Entries within a factor 20 of the
-true one are its look-alikes: this measurement cannot tell them apart.
+The oracle is given the true shift, noise scale, width, floor, shares, the other phases with their true
+lattice constants, and the drift distribution of each class. It puts every entry in the place of one true
+phase, at the lattice constants that lay its lines on the true ones, and compares evidence. Entries within a
+factor 20 of the true one are its look-alikes: this measurement cannot tell them apart.
 """
 
 from __future__ import annotations
@@ -61,7 +61,6 @@ def judge(case: Case, table: PhaseTable, phase: TruePhase) -> Verdict:
 
 def candidates(table: PhaseTable, phase: TruePhase) -> list[tuple[int, FloatArray]]:
     """Return (row, lattice constants to try) of every entry that could lie on the true phase's lines."""
-    found: list[tuple[int, FloatArray]] = []
     ratios = np.array(RATIOS) * phase.a_true
     drift = ratios[None, :] / table.a_angstrom[:, None] - 1.0
     reach = np.full(len(table), MOST_DRIFT)
@@ -71,9 +70,8 @@ def candidates(table: PhaseTable, phase: TruePhase) -> list[tuple[int, FloatArra
         np.abs(table.a_high_angstrom / table.a_angstrom - 1.0),
     )
     reach[ranged] = np.maximum(reach[ranged], width[ranged] + 0.002)
-    for row in np.flatnonzero((np.abs(drift) < reach[:, None]).any(axis=1)):
-        found.append((int(row), ratios[np.abs(drift[row]) < reach[row]]))
-    return found
+    near = np.abs(drift) < reach[:, None]
+    return [(int(row), ratios[near[row]]) for row in np.flatnonzero(near.any(axis=1))]
 
 
 def drift_density(table: PhaseTable, row: int, e: FloatArray) -> FloatArray:
@@ -163,7 +161,7 @@ class _View:
     def evidence(
         self, table: PhaseTable, row: int, a_values: FloatArray, share: float, base: FloatArray
     ) -> float:
-        """Return the log evidence of entry `row` in the place of the phase, its drift and share integrated out."""
+        """Return the log evidence of entry `row` in the phase's place, drift and share integrated out."""
         noise = self.background / (self.high - self.low)
         tangent = np.tan(np.radians(self.x) / 2.0)
         width = 1.0 / np.sqrt(np.sum((np.degrees(2.0 * tangent) / self.sigma) ** 2) * 0.3 + 1.0)

@@ -1,7 +1,8 @@
 """The usual practice, for comparison: four textbook ways to rank phases and to decide how many are there.
 
-All use the stored lattice constants, the positions as measured and a fixed tolerance, without a shared shift, a
-drift or a probability. They stand for common practice and for the published figure of merit, not for a program.
+All use the stored lattice constants, the positions as measured and a fixed tolerance, without a shared
+shift, a drift or a probability. They stand for common practice and for the published figure of merit, not
+for a program.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
-"""Run the study: ``python -m study.run --set reporting --lists 200 --jobs 2 -o study.json`` (from ``tests/``).
+"""Run the study, from ``tests/``: ``python -m study.run --set reporting --lists 200 --jobs 2 -o study.json``.
 
-Prints the table of figures (Markdown) with bootstrap intervals, the rivals' figures on the same lists, and the
-reliability diagram; ``-o`` keeps everything, one row for each list, for diagnosis. ``--failures`` prints the lists
-with a wrong claim or a missed phase. The same command gives the same table.
+Prints the table of figures (Markdown) with bootstrap intervals, the rivals' figures on the same lists, and
+the reliability diagram; ``-o`` keeps everything, one row for each list, for diagnosis. ``--failures``
+prints the lists with a wrong claim or a missed phase. The same command gives the same table.
 """
 
 from __future__ import annotations
@@ -25,7 +25,7 @@ from study.metrics import ListScore, score
 from study.oracle import judge
 from study.rivals import RIVALS
 from study.sets import SETS, make_case
-from study.tables import figures_text, reliability_text, rivals_text
+from study.tables import figures_text, honesty_text, reliability_text, rivals_text
 from study.truth import Case
 
 
@@ -55,14 +55,11 @@ def study_one(task: tuple[str, str, int], *, with_rivals: bool) -> Row:
     case = make_case(set_name, kind, number)
     verdicts = [judge(case, starter_table(), phase) for phase in case.truth.phases]
     start = time.perf_counter()
-    fault = ""
     try:
         found = match(case.peaks, case.table, MatchSettings())
         result = score(case, found, verdicts, time.perf_counter() - start)
     except Exception:  # a fault of the matcher is a finding of the study, not its end
-        fault = traceback.format_exc(limit=-3)
-        result = ListScore(case.truth.seed, sum(not phase.removed for phase in case.truth.phases), 0, 0, 0, 0.0, (), (),
-                           tuple(phase.name for phase in case.truth.phases), (), (), (), (), 0.0, fault)  # fmt: skip
+        result = ListScore.failed(case, traceback.format_exc(limit=-3))
     return Row(set_name, number, result, _rivals(case, verdicts) if with_rivals else {}, describe(case))
 
 
@@ -96,7 +93,8 @@ def describe(case: Case) -> str:
     radiation = case.peaks.radiation.name if case.peaks.radiation else "none"
     return (
         f"[{phases or truth.note}] {radiation} {case.peaks.unit} n={len(case.peaks)} "
-        f"noise={truth.noise_deg:.3f} z={truth.zero_deg:+.3f} s={truth.displacement_mm:+.3f} floor={truth.floor:.3f} "
+        f"noise={truth.noise_deg:.3f} z={truth.zero_deg:+.3f} s={truth.displacement_mm:+.3f} "
+        f"floor={truth.floor:.3f} "
         f"fwhm={truth.fwhm_deg:.2f}{' I' if case.peaks.intensity is not None else ''}"
         f"{' range?' if case.peaks.range_assumed else ''}"
     )
@@ -141,7 +139,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     rows = run(options.kind, options.lists, jobs=options.jobs, only=options.only, first=options.first,
                with_rivals=not options.no_rivals)  # fmt: skip
     text = "\n\n".join(
-        part for part in (figures_text(rows), rivals_text(rows), reliability_text(rows)) if part
+        part
+        for part in (figures_text(rows), honesty_text(rows), rivals_text(rows), reliability_text(rows))
+        if part
     )
     if options.failures:
         print_failures(rows)

@@ -58,16 +58,15 @@ def simulate(
     with_intensity: bool = True,
     d_only: bool = False,
     remove: int = 0,
-    candidates: np.ndarray | None = None,
     experiment: Experiment | None = None,
 ) -> Case:
     """Return a list of a sample of `n_phases` phases of `table`.
 
-    `remove` true phases are taken out of the table that the matcher gets; `candidates` are the rows that may be
-    drawn (default: those that a room-temperature sample can hold); `experiment` fixes what would be drawn.
+    `remove` true phases are taken out of the table that the matcher gets. `experiment` fixes the
+    measurement, which is drawn else. Entries recorded far from room temperature are never drawn.
     """
     rng = np.random.default_rng(seed)
-    rows = room_temperature_rows(table) if candidates is None else candidates
+    rows = room_temperature_rows(table)
     for _ in range(200):
         setting = experiment or Experiment.draw(rng)
         picked = rng.choice(rows, size=n_phases, replace=False)
@@ -260,7 +259,7 @@ def add_diffracted(
 def observe(
     lines: Lines, setting: Experiment, rng: np.random.Generator, *, with_intensity: bool, d_only: bool
 ) -> tuple[PeakList, tuple[tuple[str, ...], ...]] | None:
-    """Return the list as the analyst has it, and the owners of its lines: merge, threshold, scatter, round."""
+    """Return the list as the analyst has it, and the owners of its lines: merge, cut, scatter, round."""
     shifted = lines.two_theta_deg + shift_deg(
         lines.two_theta_deg, setting.zero_deg, setting.displacement_mm, setting.radius_mm
     )

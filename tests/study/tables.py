@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -12,6 +12,7 @@ from study.metrics import (
     bootstrap,
     brier,
     calibration_error,
+    claimed_share,
     log_loss,
     pooled,
     reliability,
@@ -22,98 +23,107 @@ from study.metrics import (
 if TYPE_CHECKING:
     from study.run import Row
 
-GROUPS = (
-    ("1-3 phases, intensities", ("one", "two", "three")),
-    ("1-3 phases, no intensities", ("one-bare", "two-bare", "three-bare")),
+Scores = Sequence[ListScore]
+Figure = Callable[[Scores], float]
+
+GROUPS = {
+    "1 to 3, intensities": ("one", "two", "three"),
+    "1 to 3, bare": ("one-bare", "two-bare", "three-bare"),
+}
+"""Sets that the design gives one figure for."""
+
+COLUMNS: tuple[tuple[str, Figure, float], ...] = (
+    ("found, look-alikes (%)", lambda scores: share(scores, "found_alike"), 100.0),
+    ("found, strict (%)", lambda scores: share(scores, "found_strict"), 100.0),
+    ("ceiling, strict (%)", lambda scores: share(scores, "ceiling"), 100.0),
+    ("phases claimed (%)", claimed_share, 100.0),
+    ("wrong claims a list", wrong_per_list, 1.0),
 )
 
 
-def _by_set(rows: Sequence[Row]) -> dict[str, list[Row]]:
+def by_set(rows: Sequence[Row]) -> dict[str, list[Row]]:
+    """Return the rows of each set, then those of each group of sets that is complete."""
     sets: dict[str, list[Row]] = {}
     for row in rows:
         sets.setdefault(row.set_name, []).append(row)
-    for label, names in GROUPS:
+    for label, names in GROUPS.items():
         if all(name in sets for name in names):
             sets[label] = [row for name in names for row in sets[name]]
     return sets
 
 
-def _percent(triple: tuple[float, float, float]) -> str:
-    value, low, high = triple
-    return "–" if np.isnan(value) else f"{100 * value:.1f} ({100 * low:.1f}–{100 * high:.1f})"
-
-
-def _plain(triple: tuple[float, float, float], digits: int = 3) -> str:
-    value, low, high = triple
-    return "–" if np.isnan(value) else f"{value:.{digits}f} ({low:.{digits}f}–{high:.{digits}f})"
-
-
 def figures_text(rows: Sequence[Row]) -> str:
-    """Return the main table: one row for each set, with 95 % bootstrap intervals."""
-    lines = [
-        "| set | lists | found, look-alikes (%) | found, strict (%) | ceiling, strict (%) | wrong claims per list | "
-        "phases claimed (%) | shift in 2 esd (%) | ms a list |",
-        "| --- | --- | --- | --- | --- | --- | --- | --- | --- |",
-    ]
-    for name, members in _by_set(rows).items():
+    """Return the main table: one row for each set, with 95 % bootstrap intervals over whole lists."""
+    heads = ["set", "lists", *(head for head, _, _ in COLUMNS), "shift within 2 esd (%)", "ms a list"]
+    lines = [_row(heads), _row(["---"] * len(heads))]
+    for name, members in by_set(rows).items():
         scores = [row.score for row in members]
-        inside = [np.mean(one.shift_inside) for one in scores if one.shift_inside]
-        claimed = bootstrap(scores, _claimed)
-        lines.append(
-            f"| {name} | {len(scores)} | {_percent(bootstrap(scores, lambda s: share(s, 'found_alike')))} | "
-            f"{_percent(bootstrap(scores, lambda s: share(s, 'found_strict')))} | "
-            f"{_percent(bootstrap(scores, lambda s: share(s, 'ceiling')))} | "
-            f"{_plain(bootstrap(scores, wrong_per_list))} | {_percent(claimed)} | "
-            f"{f'{100 * np.mean(inside):.1f}' if inside else '–'} | "
-            f"{1000 * np.mean([one.seconds for one in scores]):.0f} |"
-        )
-    lines += ["", "| probabilities | n | ECE | Brier | log loss |", "| --- | --- | --- | --- | --- |"]
-    everything = [row.score for row in rows]
-    for label, kind in (("strict", "strict"), ("rule for claims", "rule"), ("groups", "group")):
-        p, _ = pooled(everything, kind)
-        lines.append(
-            f"| {label} | {len(p)} | {_plain(bootstrap(everything, lambda s, k=kind: calibration_error(*pooled(s, k))))} | "
-            f"{_plain(bootstrap(everything, lambda s, k=kind: brier(*pooled(s, k))))} | "
-            f"{_plain(bootstrap(everything, lambda s, k=kind: log_loss(*pooled(s, k))))} |"
-        )
+        inside = [float(np.mean(one.shift_inside)) for one in scores if one.shift_inside]
+        cells = [_cell(scores, figure, scale) for _, figure, scale in COLUMNS]
+        covered = f"{100 * np.mean(inside):.1f}" if inside else "–"
+        time_ms = f"{1000 * np.mean([one.seconds for one in scores]):.0f}"
+        lines.append(_row([name, str(len(scores)), *cells, covered, time_ms]))
     faults = sum(bool(row.score.fault) for row in rows)
-    if faults:
-        lines.append(f"\nFAULTS: {faults} lists ended in an error")
+    return "\n".join(lines) + (f"\n\nFAULTS: {faults} lists ended in an error" if faults else "")
+
+
+def honesty_text(rows: Sequence[Row]) -> str:
+    """Return the calibration figures of all probabilities >= 0.05, over all sets."""
+    scores = [row.score for row in rows]
+    heads = ["probabilities", "n", "ECE", "Brier", "log loss"]
+    lines = [_row(heads), _row(["---"] * len(heads))]
+    for kind in ("entry", "group"):
+        figures = [
+            _cell(scores, lambda some, f=figure, k=kind: f(*pooled(some, k)), 1.0)
+            for figure in (calibration_error, brier, log_loss)
+        ]
+        lines.append(_row([kind, str(len(pooled(scores, kind)[0])), *figures]))
     return "\n".join(lines)
 
 
-def _claimed(scores: Sequence[ListScore]) -> float:
-    total = sum(one.n_listed for one in scores)
-    missed = sum(len(one.missed) for one in scores)
-    return 1.0 - missed / total if total else float("nan")
-
-
 def rivals_text(rows: Sequence[Row]) -> str:
-    """Return the usual practice on the same lists."""
+    """Return the usual practice on the same lists, beside the matcher."""
     names = list(rows[0].rivals) if rows else []
     if not names:
         return ""
-    lines = [
-        "| usual practice | set | found, look-alikes (%) | found, strict (%) | wrong claims per list |",
-        "| --- | --- | --- | --- | --- |",
-    ]
-    for name in names:
-        for set_name, members in _by_set(rows).items():
-            total = sum(row.score.n_listed for row in members)
-            wrong = np.mean([row.rivals[name].wrong for row in members])
-            alike, strict = (
-                "–"
-                if not total
-                else f"{100 * sum(getattr(row.rivals[name], field) for row in members) / total:.1f}"
-                for field in ("found_alike", "found_strict")
-            )
-            lines.append(f"| {name} | {set_name} | {alike} | {strict} | {wrong:.2f} |")
+    sets = by_set(rows)
+    single = {name for members in GROUPS.values() for name in members}
+    shown = [name for name in sets if name not in single or not set(GROUPS) & set(sets)]
+    lines = [_row(["found, look-alikes (%) / wrong claims a list", *shown])]
+    lines.append(_row(["---"] * (len(shown) + 1)))
+    scores = {name: [row.score for row in sets[name]] for name in shown}
+    ours = [_pair(share(scores[name], "found_alike"), wrong_per_list(scores[name])) for name in shown]
+    lines.append(_row(["this matcher", *ours]))
+    for rival in names:
+        cells = []
+        for name in shown:
+            total = sum(row.score.n_listed for row in sets[name])
+            found = sum(row.rivals[rival].found_alike for row in sets[name])
+            wrong = float(np.mean([row.rivals[rival].wrong for row in sets[name]]))
+            cells.append(_pair(found / total if total else float("nan"), wrong))
+        lines.append(_row([rival, *cells]))
     return "\n".join(lines)
 
 
 def reliability_text(rows: Sequence[Row]) -> str:
     """Return the reliability diagram as a table: stated against seen in ten equal-count bins."""
-    lines = ["| stated (strict) | seen | n |", "| --- | --- | --- |"]
-    p, right = pooled([row.score for row in rows], "strict")
-    lines += [f"| {stated:.3f} | {seen:.3f} | {count} |" for stated, seen, count in reliability(p, right)]
+    lines = [_row(["stated (entry)", "seen", "n"]), _row(["---"] * 3)]
+    p, right = pooled([row.score for row in rows], "entry")
+    lines += [
+        _row([f"{stated:.3f}", f"{seen:.3f}", str(count)]) for stated, seen, count in reliability(p, right)
+    ]
     return "\n".join(lines)
+
+
+def _row(cells: Sequence[str]) -> str:
+    return "| " + " | ".join(cells) + " |"
+
+
+def _cell(scores: Scores, figure: Figure, scale: float) -> str:
+    value, low, high = (scale * part for part in bootstrap(scores, figure))
+    digits = 1 if scale > 1.0 else 3
+    return "–" if np.isnan(value) else f"{value:.{digits}f} ({low:.{digits}f}–{high:.{digits}f})"
+
+
+def _pair(found: float, wrong: float) -> str:
+    return f"{'–' if np.isnan(found) else f'{100 * found:.1f}'} / {wrong:.2f}"
