@@ -46,6 +46,8 @@ class PeakList:
     ring_scale_approximate : bool
         True when d came from a camera constant (small-angle form).
     camera_length_mm : float or None
+    scale_esd_relative : float or None
+        Relative standard uncertainty of a calibrated camera constant, shared by all lines.
     notes : tuple of str
         Cautions that reading gave rise to, for the user.
     """
@@ -68,6 +70,7 @@ class PeakList:
     sample: str = ""
     ring_scale_approximate: bool = False
     camera_length_mm: float | None = None
+    scale_esd_relative: float | None = None
     notes: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
