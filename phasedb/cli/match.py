@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -14,6 +15,7 @@ from phasedb.errors import InputError
 
 if TYPE_CHECKING:
     from phasedb.identify.result import Match
+    from phasedb.identify.settings import MatchSettings
     from phasedb.library import Library
     from phasedb.measured.peaklist import PeakList
 
@@ -50,12 +52,18 @@ def match(
 
         figure_format(Path(figure))
     if save and asked.as_of is not None:
-        raise InputError("a match with the library of another day cannot be saved", hint="leave out --as-of or --save")
+        raise InputError(
+            "a match with the library of another day cannot be saved", hint="leave out --as-of or --save"
+        )
     peaks = measured.read(ctx, peaks_file)
     library = open_library(ctx, write=save, as_of=asked.as_of)
-    found = match_with(ctx, library, peaks, measured, asked)
+    settings = settings_for(ctx, library, peaks, measured, asked)
+    with library.reading():  # fingerprint and table of one moment, whoever writes meanwhile
+        found = run_match(peaks, TableOnce(library), settings)
     if save:
-        note(_save(library, peaks, found))
+        from phasedb.cli.records import save_match
+
+        note(f"saved as identification {save_match(library, peaks, settings, found)}")
     if figure is not None:
         from phasedb.report.figures import match_figure
 
@@ -75,15 +83,14 @@ def match_with(
     ctx: click.Context, library: Library, peaks: PeakList, measured: PeakOptions, asked: MatchOptions
 ) -> Match:
     """Return the match of `peaks` against `library` with the given options."""
-    foreign = None if asked.foreign is None else foreign_positions(asked.foreign, measured, ctx, peaks)
-    settings = asked.settings(library, foreign, measured.shift_prior(ctx))
-    return run_match(peaks, TableOnce(library), settings)
+    return run_match(peaks, TableOnce(library), settings_for(ctx, library, peaks, measured, asked))
 
 
-def _save(library: Library, peaks: PeakList, found: Match) -> str:
-    """Keep the result in the library; return what to tell the user."""
-    from phasedb.library.records import save_identification
-    from phasedb.report.document import match_document
-
-    identification = save_identification(library, peaks, match_document(found, with_axis=True))
-    return f"saved as identification {identification}"
+def settings_for(
+    ctx: click.Context, library: Library, peaks: PeakList, measured: PeakOptions, asked: MatchOptions
+) -> MatchSettings:
+    """Return the settings that the options ask for, the foreign lines in the unit of `peaks`."""
+    settings = asked.settings(library, measured.shift_prior(ctx))
+    if asked.foreign is None:
+        return settings
+    return replace(settings, foreign_positions=foreign_positions(measured.read(ctx, asked.foreign), peaks))

@@ -1,4 +1,4 @@
-"""What `match`, `report` and `batch` share: the options of a match, and running one against the open library."""
+"""What `match`, `report` and `batch` share: the options of a match, and running one on the open library."""
 
 from __future__ import annotations
 
@@ -16,10 +16,9 @@ if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
-    from phasedb.cli.peak_options import PeakOptions
     from phasedb.crystal.phases import PhaseTable
     from phasedb.identify.result import Match
-    from phasedb.identify.settings import MatchSettings
+    from phasedb.identify.settings import MatchSettings, ShiftPrior
     from phasedb.library import Library
     from phasedb.measured.peaklist import PeakList
 
@@ -47,10 +46,8 @@ class MatchOptions:
     any_temperature: bool
     rank_by: str
 
-    def settings(
-        self, library: Library, foreign: NDArray[np.float64] | None, prior: object = None
-    ) -> MatchSettings:
-        """Return the settings, with every element and name checked.
+    def settings(self, library: Library, prior: ShiftPrior | None) -> MatchSettings:
+        """Return the settings, with every element and name checked (foreign lines come with the list).
 
         Raises
         ------
@@ -68,11 +65,10 @@ class MatchOptions:
             excluding=_symbols(self.excluding or "", "--excluding"),
             strict_chemistry=self.strict_chemistry,
             internal_standard=standard,
-            foreign_positions=foreign,
             any_temperature=self.any_temperature,
             checked_only=self.checked_only,
             rank_by=rank_by,
-            shift_prior=prior if isinstance(prior, ShiftPrior) else ShiftPrior(),
+            shift_prior=prior or ShiftPrior(),
         )
 
 
@@ -102,11 +98,11 @@ def match_options(command: _Command) -> _Command:
             shell_complete=complete_phase,
             help="An entry that was mixed in, with its certified a.",
         ),
-        click.option(
-            "--foreign", metavar="FILE", help="Lines of a holder or known non-cubic companion."
-        ),
+        click.option("--foreign", metavar="FILE", help="Lines of a holder or known non-cubic companion."),
         click.option("--checked-only", is_flag=True, help="Leave drafts out."),
-        click.option("--any-temperature", is_flag=True, help="Also entries recorded far from this temperature."),
+        click.option(
+            "--any-temperature", is_flag=True, help="Also entries recorded far from this temperature."
+        ),
         click.option("--as-of", metavar="DATE", help="Use the library as it was then."),
         click.option(
             "--rank-by",
@@ -138,18 +134,18 @@ def _symbols(text: str, option: str) -> tuple[str, ...]:
 
 
 class TableOnce:
-    """A library whose phase table is read once, for many matches."""
+    """An open library whose phase table is read once, for many matches."""
 
     def __init__(self, library: Library) -> None:
         self.phase_count = library.phase_count
         self.fingerprint = library.fingerprint
-        self._library = library
+        self.library = library
         self._tables: dict[bool, PhaseTable] = {}
 
     def table(self, *, checked_only: bool = False) -> PhaseTable:
         """Return the phases that can be matched."""
         if checked_only not in self._tables:
-            self._tables[checked_only] = self._library.table(checked_only=checked_only)
+            self._tables[checked_only] = self.library.table(checked_only=checked_only)
         return self._tables[checked_only]
 
 
@@ -158,19 +154,22 @@ def run_match(peaks: PeakList, source: TableOnce, settings: MatchSettings) -> Ma
     from phasedb.identify import match
 
     found = match(peaks, source, settings)
-    table = source.table(checked_only=settings.checked_only)
-    starters = {name for name, starter in zip(table.name, table.is_starter, strict=True) if starter}
-    named = (phase for phase in found.phases if phase.group_probability >= 0.05)
-    if any(phase.standing == "draft" and phase.name in starters for phase in named):
+    drafts = [p.name for p in found.phases if p.group_probability >= 0.05 and p.standing == "draft"]
+    if any("starter" in source.library.get(name).content.tags for name in drafts):
         return replace(found, cautions=(*found.cautions, STARTER_CAUTION))
     return found
 
 
-def foreign_positions(path: str, measured: PeakOptions, ctx: click.Context, peaks: PeakList) -> NDArray[np.float64]:
-    """Return the lines of a foreign list in the unit of `peaks`."""
+def foreign_positions(foreign: PeakList, peaks: PeakList) -> NDArray[np.float64]:
+    """Return the lines of a foreign list in the unit of `peaks`.
+
+    Raises
+    ------
+    InputError
+        If one unit cannot be turned into the other.
+    """
     from phasedb.crystal.radiation import q_from_d, two_theta_from_d
 
-    foreign = measured.read(ctx, path)
     if foreign.unit == peaks.unit:
         return foreign.position
     if peaks.unit == "d":
@@ -181,6 +180,6 @@ def foreign_positions(path: str, measured: PeakOptions, ctx: click.Context, peak
         return two_theta_from_d(foreign.d_angstrom, peaks.radiation.wavelength_angstrom)
     raise InputError(
         f"foreign lines in {foreign.unit} cannot be turned into {peaks.unit}",
-        where=path,
+        where=foreign.source,
         hint="give the foreign lines in the same unit as the peak list",
     )

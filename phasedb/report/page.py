@@ -17,7 +17,7 @@ from phasedb.report.figures import Entry
 from phasedb.report.inline_svg import inline_svg
 from phasedb.report.page_rows import line_rows, phase_rows
 from phasedb.report.table import printable
-from phasedb.report.text import candidate_text, shift_text
+from phasedb.report.text import LEAST_SHOWN, candidate_text, candidates_shown, shift_text
 from phasedb.report.verdict import verdict
 
 _TEMPLATES: Final = Path(__file__).parent / "templates"
@@ -33,7 +33,7 @@ class TestDetails:
     sample: str = ""
     condition: str = ""
     received: str = ""
-    measured: str = ""
+    measured_on: str = ""
     analyst: str = ""
     instrument: str = ""
     method: str = ""
@@ -47,7 +47,7 @@ TITLES: Final[dict[str, str]] = {
     "sample": "Sample",
     "condition": "Condition and preparation",
     "received": "Received on",
-    "measured": "Measured on",
+    "measured_on": "Measured on",
     "analyst": "Measured and interpreted by",
     "instrument": "Instrument",
     "method": "Method",
@@ -120,7 +120,6 @@ def _words(match: Match, details: TestDetails, facts: PageFacts) -> dict[str, An
     given = [(TITLES[c.name], printable(getattr(details, c.name))) for c in fields(details)]
     blank = [name.lower() for name, value in given if not value]
     unlisted = match.unlisted
-    candidates = [unlisted.best, *unlisted.others] if unlisted.best is not None else []
     return {
         "title": printable(details.sample or measurement.sample or measurement.source or "Peak list"),
         "number": _number(match, details),
@@ -132,12 +131,12 @@ def _words(match: Match, details: TestDetails, facts: PageFacts) -> dict[str, An
         "show_d": measurement.position_unit != "d",
         "show_intensity": any(line.intensity is not None for line in match.ledger),
         "lines": line_rows(match, marks),
-        "phases": phase_rows(match, marks),
+        "phases": phase_rows(match, marks, least=LEAST_SHOWN),
         "unlisted": (
             f"Probability {wording.probability(unlisted.probability)} that a cubic phase is present which the"
             f" library lacks; {wording.probability(match.nothing_cubic)} that nothing cubic is present."
         ),
-        "candidates": [printable(candidate_text(candidate)) for candidate in candidates if candidate],
+        "candidates": [printable(candidate_text(place)) for place in candidates_shown(match)],
         "bars": _bars(match),
         "shift": printable(shift_text(match.shift)),
         "settings": _settings(match, facts),

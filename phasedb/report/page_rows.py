@@ -106,11 +106,13 @@ def _line_said(line: LedgerLine, row: dict[str, Any], unit: str) -> str:
     return text + "."
 
 
-def phase_rows(match: Match, marks: dict[str, Mark]) -> list[dict[str, Any]]:
-    """Return one row for each ranked phase; a phase without a mark is lettered by its rank."""
+def phase_rows(match: Match, marks: dict[str, Mark], *, least: float) -> list[dict[str, Any]]:
+    """Return a row for each phase of at least that probability; one without a mark is known by its rank."""
     rows = []
     for rank, phase in enumerate(match.phases, 1):
         mark = marks.get(phase.name)
+        if phase.probability < least and mark is None:
+            continue
         row = {
             "letter": str(rank) if mark is None else mark.letter,
             "mark": None if mark is None else key(mark),

@@ -3,12 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from typing import Final
 
 from phasedb.crystal.quantity import format_measured
 from phasedb.identify.result import LedgerLine, Match, PhaseResult, Shift, UnlistedCandidate
 from phasedb.report import wording
 from phasedb.report.table import Column, paragraph, table
 from phasedb.report.verdict import verdict
+
+LEAST_SHOWN: Final = 0.01
+"""Phases and places of unlisted phases below this probability are only counted."""
 
 Style = Callable[[str, str], str]
 """Takes a text and a role (``heading``, ``weak``) and returns it styled; the width must not change."""
@@ -31,10 +35,9 @@ def match_text(match: Match, *, width: int = 80, style: Style = plain) -> str:
         Colours headings and weak remarks; plain by default.
     """
     parts = ["\n".join(paragraph(sentence, width) for sentence in verdict(match))]
-    if match.phases:
-        parts.append(_heading("Ranking", style) + "\n" + _ranking(match, width))
+    parts.append(_heading("Ranking", style) + "\n" + _ranking(match, width))
     parts.append(_heading("Ledger", style) + "\n" + _ledger(match, width))
-    if match.unlisted.best is not None:
+    if match.unlisted.probability >= LEAST_SHOWN:
         parts.append(_heading("Not in the library", style) + "\n" + _unlisted(match, width))
     parts.append(_heading("Shift and noise", style) + "\n" + paragraph(shift_text(match.shift), width))
     if match.cautions:
@@ -59,6 +62,10 @@ def _ranking(match: Match, width: int) -> str:
         Column("lines", "right"),
         Column("share", "right"),
     )
+    shown = [phase for phase in match.phases if phase.probability >= LEAST_SHOWN]
+    left = len(match.phases) - len(shown)
+    if not shown:
+        return "No listed phase reaches a probability of 0.01."
     rows = [
         (
             str(rank),
@@ -70,14 +77,16 @@ def _ranking(match: Match, width: int) -> str:
             f"{phase.lines_claimed}/{phase.lines_expected:.1f}",
             "-" if phase.share is None else f"{phase.share:.2f}",
         )
-        for rank, phase in enumerate(match.phases, 1)
+        for rank, phase in enumerate(shown, 1)
     ]
-    details = "\n".join(
+    details = [
         paragraph(text, width, first=f"{rank:>4}  ")
-        for rank, phase in enumerate(match.phases, 1)
+        for rank, phase in enumerate(shown, 1)
         for text in _details(phase)
-    )
-    return f"{table(columns, rows, width)}\n\n{details}"
+    ]
+    if left:
+        details.append(paragraph(f"and {left} below 0.01 (see --json)", width, first="      "))
+    return "\n".join([table(columns, rows, width), "", *details])
 
 
 def _phase_cell(phase: PhaseResult) -> str:
@@ -156,13 +165,20 @@ def candidate_text(candidate: UnlistedCandidate) -> str:
     a = wording.lattice_constant(candidate.a_angstrom, candidate.a_esd_angstrom)
     text = f"{candidate.lattice_type}, a = {a} Å, p {wording.probability(candidate.probability)}"
     text += f", {wording.plural(candidate.lines_claimed, 'line')}"
-    for merit in (wording.merit_f(candidate.merit_f), wording.merit_m(candidate.merit_m)):
-        if merit != "-":
-            text += f", {merit}"
+    merits = (wording.merit_f(candidate.merit_f), wording.merit_m(candidate.merit_m))
+    if candidate.lines_claimed > 1:
+        text += "".join(f", {merit}" for merit in merits if merit != "-")
     if candidate.nearest:
         near = [f"{name} ({wording.percent(difference, 2)})" for name, difference in candidate.nearest]
         text += f"; nearest entries: {', '.join(near)}"
     return text
+
+
+def candidates_shown(match: Match) -> list[UnlistedCandidate]:
+    """Return the places of an unlisted phase that are worth showing, the most probable first."""
+    best = match.unlisted.best
+    places = [] if best is None else [best, *match.unlisted.others]
+    return [place for place in places if place.probability >= LEAST_SHOWN]
 
 
 def _unlisted(match: Match, width: int) -> str:
@@ -171,12 +187,9 @@ def _unlisted(match: Match, width: int) -> str:
         f"Probability {probability} that a cubic phase is present which the library lacks."
         " Where it would lie:"
     )
-    candidates = [match.unlisted.best, *match.unlisted.others]
-    body = [
-        paragraph(candidate_text(candidate), width, first="- ")
-        for candidate in candidates
-        if candidate is not None
-    ]
+    body = [paragraph(candidate_text(place), width, first="- ") for place in candidates_shown(match)]
+    if not body:
+        return paragraph(head.removesuffix(" Where it would lie:") + " No place stands out.", width)
     return "\n".join([paragraph(head, width), *body])
 
 

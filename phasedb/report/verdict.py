@@ -11,6 +11,7 @@ from phasedb.report import wording
 WORTH_NAMING: Final = 0.05
 """A phase that is not claimed is mentioned from this probability on."""
 
+_SURE: Final = 0.95  # above this a phase's sentence leaves out what would tell it from its look-alikes
 _LUCKY: Final = 0.05  # from this expected number of chance matches on, the sentence says it
 
 
@@ -74,8 +75,9 @@ def _named(phase: PhaseResult, match: Match, *, also: bool) -> str:
             f" of {match.library_phase_count} phases."
         )
     if phase.look_alikes:
+        others = _names(phase.look_alikes, phase.look_alike_count)
         text += (
-            f" It can hardly be told from {_names(phase.look_alikes, phase.look_alike_count)}{_apart(phase)}."
+            f" By its lines alone it could be {others}{_apart(phase) if phase.probability < _SURE else ''}."
         )
     return text
 
@@ -89,7 +91,7 @@ def _names(names: Sequence[str], count: int, joiner: str = "or") -> str:
 
 
 def _apart(phase: PhaseResult) -> str:
-    return f"; what would: {wording.listing(phase.separated_by, 'or')}" if phase.separated_by else ""
+    return f". To tell them apart: {'; or '.join(phase.separated_by[:2])}" if phase.separated_by else ""
 
 
 def _group(group: Sequence[PhaseResult], *, also: bool) -> str:
