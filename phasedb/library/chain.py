@@ -52,14 +52,12 @@ COLUMNS: Final = tuple(field.name for field in fields(HistoryRow))
 
 
 def row_hash(values: tuple[object, ...]) -> str:
-    """Return the SHA-256 of a row's values (all but its own hash), each written with its length."""
-    digest = hashlib.sha256()
+    """Return the SHA-256 of a row's values (all but its own hash), each after its length in characters."""
+    parts = []
     for value in values:
-        data = b"" if value is None else str(value).encode("utf-8", "surrogatepass")
-        mark = "-" if value is None else str(len(data))
-        digest.update(f"{mark}:".encode())
-        digest.update(data)
-    return digest.hexdigest()
+        text = "" if value is None else str(value)
+        parts.append("-:" if value is None else f"{len(text)}:{text}")
+    return hashlib.sha256("".join(parts).encode("utf-8", "surrogatepass")).hexdigest()
 
 
 def is_whole(row: HistoryRow) -> bool:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import uuid
+import secrets
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
 from itertools import islice
@@ -66,7 +66,8 @@ class WarningsRefusedError(RuleRefusedError):
 
 
 def new_uid() -> str:
-    return uuid.uuid4().hex
+    """Return 32 random hex digits."""
+    return secrets.token_hex(16)
 
 
 def document_of(entry: Entry) -> dict[str, Any]:

@@ -41,6 +41,8 @@ def clean_name(text: str, *, what: str = "name") -> str:
         raise InputError(
             f"the {what} {name[:30]!r}... has {len(name)} characters: expected at most {NAME_LIMIT}"
         )
+    if name.isascii() and name.isprintable():
+        return name
     for character in name:
         if unicodedata.category(character) in ("Cc", "Cs", "Co", "Cn") or character in _UNSEEN_IN_NAMES:
             raise InputError(
@@ -52,6 +54,8 @@ def clean_name(text: str, *, what: str = "name") -> str:
 
 def clean_text(text: str, *, what: str) -> str:
     """Return free text; line breaks stay, other control characters are refused."""
+    if text.isascii() and text.isprintable() and len(text) <= TEXT_LIMIT:
+        return text.strip()
     if len(text) > TEXT_LIMIT:
         raise InputError(f"the {what} has {len(text)} characters: expected at most {TEXT_LIMIT}")
     text = unicodedata.normalize("NFC", text.replace("\r\n", "\n").replace("\r", "\n")).strip()

@@ -144,9 +144,12 @@ def key_of(name: str) -> str:
     return unicodedata.normalize("NFC", " ".join(name.split()).casefold())
 
 
+_encode = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False).encode
+
+
 def canonical_json(value: Any) -> str:
     """Return JSON with sorted keys and no spaces: the same value always gives the same text."""
-    return json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+    return _encode(value)
 
 
 # Field names in JSON and CSV, where they differ from the attribute.

@@ -69,11 +69,25 @@ def child_values(content: Draft, phase_id: int) -> dict[sa.Table, list[dict[str,
     }
 
 
+def insert_rows(connection: Connection, table: sa.Table, rows: Sequence[dict[str, Any]]) -> None:
+    """Insert many rows that all give the same columns; straight to the driver where that is quicker."""
+    if not rows:
+        return
+    if connection.dialect.name != "sqlite":
+        connection.execute(sa.insert(table), rows)
+        return
+    names = tuple(rows[0])
+    marks = ", ".join("?" * len(names))
+    columns = ", ".join(f'"{name}"' for name in names)
+    values = [tuple(row.values()) for row in rows]  # one builder made them all, so the order is the same
+    connection.exec_driver_sql(f'INSERT INTO "{table.name}" ({columns}) VALUES ({marks})', values)  # noqa: S608
+
+
 def insert_entries(connection: Connection, entries: Sequence[Entry], checksums: Sequence[str]) -> list[int]:
     """Insert new entries with all that hangs on them; return their ids in order."""
     last = connection.execute(sa.select(sa.func.max(tables.phase.c.id))).scalar() or 0
-    connection.execute(
-        sa.insert(tables.phase), [phase_values(e, c) for e, c in zip(entries, checksums, strict=True)]
+    insert_rows(
+        connection, tables.phase, [phase_values(e, c) for e, c in zip(entries, checksums, strict=True)]
     )
     found = connection.execute(
         sa.select(tables.phase.c.uid, tables.phase.c.id).where(tables.phase.c.id > last)
@@ -87,8 +101,7 @@ def insert_entries(connection: Connection, entries: Sequence[Entry], checksums: 
             for table, rows in child_values(content, phase_id).items():
                 gathered[table].extend(rows)
     for table, rows in gathered.items():
-        if rows:
-            connection.execute(sa.insert(table), rows)
+        insert_rows(connection, table, rows)
     return ids
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from typing import Final
 
 from phasedb.crystal.lattice import check_lattice_type
@@ -36,6 +37,15 @@ def _unique(names: Iterable[str], *, what: str) -> tuple[str, ...]:
     return tuple(found[key] for key in sorted(found))
 
 
+@lru_cache(maxsize=20_000)
+def _composition(text: str) -> tuple[str, tuple[str, ...], str]:
+    """Return a formula's clean text, elements and key; large libraries hold the same formula many times."""
+    from phasedb.crystal.formula import parse_formula
+
+    formula = parse_formula(text)
+    return formula.text, formula.elements, formula.reduced
+
+
 def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
     """Check every value of a draft and put it in its normal form.
 
@@ -47,10 +57,8 @@ def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
     InputError
         Naming the value that is wrong.
     """
-    from phasedb.crystal.formula import parse_formula
-
     name = clean_name(draft.name)
-    formula = parse_formula(draft.formula)
+    formula, elements, formula_key = _composition(draft.formula)
     if draft.drift_class not in DRIFT_CLASSES:
         raise InputError(
             f"drift class {draft.drift_class!r} is not known",
@@ -70,7 +78,7 @@ def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
         draft,
         name=name,
         mineral_name=clean_name(draft.mineral_name, what="mineral name") if draft.mineral_name else "",
-        formula=formula.text,
+        formula=formula,
         lattice_type=check_lattice_type(draft.lattice_type),
         a_angstrom=a,
         a_esd_angstrom=esd or None,
@@ -97,7 +105,7 @@ def prepare(draft: Draft, *, keep_sites: bool = False) -> Prepared:
     problem = ""
     if not keep_sites:
         content, problem = _with_sites(content)
-    return Prepared(content, formula.elements, formula.reduced, problem)
+    return Prepared(content, elements, formula_key, problem)
 
 
 def canonical_type(text: str | None) -> str | None:

@@ -10,6 +10,7 @@ from phasedb import __version__
 from phasedb.library import tables
 from phasedb.library.chain import COLUMNS, row_hash
 from phasedb.library.entry import canonical_json
+from phasedb.library.mapping import insert_rows
 from phasedb.library.people import Person, now_utc
 
 if TYPE_CHECKING:
@@ -99,5 +100,5 @@ class Writing:
 
     def _flush(self) -> None:
         if self._pending:
-            self.connection.execute(sa.insert(tables.history), self._pending)
+            insert_rows(self.connection, tables.history, self._pending)
             self._pending = []
