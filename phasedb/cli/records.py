@@ -31,7 +31,7 @@ def save_match(library: Library, peaks: PeakList, settings: MatchSettings, found
     )
 
 
-# --- list and show -------------------------------------------------------------------------------------------
+# --- list and show
 
 
 @click.command(
@@ -45,8 +45,8 @@ def save_match(library: Library, peaks: PeakList, settings: MatchSettings, found
 def identifications(ctx: click.Context, number: str | None, as_json: bool) -> None:
     """List saved matches, or show one as it was found.
 
-    With --json a list has the schema phasedb.identifications/1, one match phasedb.identification/1: the facts of
-    the record, the peaks and settings that were used, and the result.
+    With --json a list has the schema phasedb.identifications/1, one match phasedb.identification/1: the facts
+    of the record, the peaks and settings that were used, and the result.
     """
     from phasedb.library import records
 
@@ -90,7 +90,7 @@ def _facts(found: Identification) -> dict[str, Any]:
 
 
 def _claimed(found: Identification) -> list[str]:
-    """Return the phases that are more likely there than not; of look-alikes the likeliest, if only together."""
+    """Return the phases that are more likely there than not; of look-alikes only the likeliest."""
     from phasedb.report.repeated import CLAIMED
 
     named: list[str] = []
@@ -160,7 +160,7 @@ def _labels(found: Identification) -> list[tuple[str, str]]:
     return pairs if found.signatures else [*pairs, ("signed", "by nobody yet")]
 
 
-# --- sign ----------------------------------------------------------------------------------------------------
+# --- sign
 
 
 @click.command(epilog=examples('phasedb --by "B. Second" sign 12 --remark "compared with the raw scan"'))
@@ -184,7 +184,7 @@ def sign(ctx: click.Context, number: str, remark: str, as_json: bool) -> None:
     click.echo(f"identification {found.number} signed by {signature.signed_by}: {_verdict(found)}")
 
 
-# --- rerun ---------------------------------------------------------------------------------------------------
+# --- rerun
 
 
 @click.command(epilog=examples("phasedb rerun 12", "phasedb rerun 12 --json"))
@@ -194,8 +194,9 @@ def sign(ctx: click.Context, number: str, remark: str, as_json: bool) -> None:
 def rerun(ctx: click.Context, number: str, as_json: bool) -> None:
     """Repeat a saved match, with the library as it was then and as it is now.
 
-    Then: the same result is expected, byte for byte, from the same program version; if it is not, that is said.
-    Now: what differs, and which entries changed by whom and why. With --json the schema is phasedb.rerun/1.
+    Then: the same result is expected, byte for byte, from the same program version; if it is not, that is
+    said. Now: what differs, and which entries changed by whom and why. With --json the schema is
+    phasedb.rerun/1.
     """
     from phasedb import __version__
     from phasedb.library import records
@@ -208,7 +209,7 @@ def rerun(ctx: click.Context, number: str, as_json: bool) -> None:
             _changed_entry(change) for change in records.entry_changes_since(library, found.history_count)
         ]
         today = _again(library, found)
-        facts = {"fingerprint": library.fingerprint, "phase_count": library.phase_count}
+        phase_count, fingerprint = library.phase_count, library.fingerprint
     then = _again(open_library(ctx, as_of=found.history_head), found)
     same_then = _text(then) == found.result_text
     kept = compare(found.result, then, ())
@@ -220,12 +221,16 @@ def rerun(ctx: click.Context, number: str, as_json: bool) -> None:
                 "id": found.number,
                 "program_version": {"then": found.program_version, "now": __version__},
                 "then": {"same_bytes": same_then, **repeated_document(kept)},
-                "now": {**facts, **repeated_document(moved)},
+                "now": {
+                    "fingerprint": fingerprint,
+                    "phase_count": phase_count,
+                    **repeated_document(moved),
+                },
                 "result": today,
             }
         )
         return
-    for line in _lines(found, same_then, kept, moved, facts["phase_count"], __version__):
+    for line in _lines(found, same_then, kept, moved, phase_count, __version__):
         click.echo(line)
 
 

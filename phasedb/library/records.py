@@ -83,7 +83,7 @@ class Identification:
     signatures: tuple[Signature, ...]
 
 
-# --- saving --------------------------------------------------------------------------------------------------
+# --- saving
 
 
 def save_measurement(writing: Writing, peaks: dict[str, Any], *, phase_id: int | None = None) -> int:
@@ -176,7 +176,7 @@ def _checksum(text: str | None) -> int:
     return 0 if text is None else int(content_checksum(json.loads(text)), 16)
 
 
-# --- reading -------------------------------------------------------------------------------------------------
+# --- reading
 
 
 def list_identifications(library: Library) -> Sequence[Identification]:
@@ -244,7 +244,7 @@ def _load(connection: Connection, condition: sa.ColumnElement[bool] | None) -> l
     ]
 
 
-# --- signing -------------------------------------------------------------------------------------------------
+# --- signing
 
 
 def sign(library: Library, number: str | int, *, remark: str = "") -> Identification:
@@ -285,7 +285,7 @@ def sign(library: Library, number: str | int, *, remark: str = "") -> Identifica
         return _get(writing.connection, found.number)
 
 
-# --- what changed since --------------------------------------------------------------------------------------
+# --- what changed since
 
 
 @dataclass(frozen=True, slots=True)

@@ -17,7 +17,7 @@ from phasedb.library.intake import draft_from_fields
 from phasedb.measured.kept import peak_list_from_json, peak_list_to_json
 from phasedb.measured.peaklist import PeakList
 
-# Made-up lists: rock-salt lines of a = 4.2412 Å and of nickel's a = 3.5239 Å, copper K-alpha1, with small errors.
+# A made-up list: rock-salt lines of a = 4.2412 Å and one of nickel, copper K-alpha1, with small errors.
 NITRIDE = """# radiation: Cu
 # sample: plate 7
 two_theta_deg,intensity,esd
