@@ -10,6 +10,7 @@ from hashlib import sha256
 from typing import Final, Protocol
 
 import numpy as np
+from numpy.typing import NDArray
 
 from phasedb.crystal.phases import PhaseTable
 from phasedb.errors import InputError, UnknownNameError
@@ -24,6 +25,8 @@ from phasedb.identify.settings import MatchSettings, ShiftPrior
 from phasedb.measured.peaklist import PeakList
 
 __all__ = ["Match", "MatchSettings", "PhaseSource", "ShiftPrior", "match"]
+
+FloatArray = NDArray[np.float64]
 
 TEMPERATURE: Final = 1.0
 STANDARD_DRIFT: Final = 2e-5  # ln a: certificates' relative expanded uncertainties are about 1.5e-5 to 2e-5
@@ -88,7 +91,7 @@ def match(peaks: PeakList, library: PhaseTable | PhaseSource, settings: MatchSet
     ).match()
 
 
-def _on_axis(peaks: PeakList, positions: np.ndarray, prior: ShiftPrior) -> np.ndarray:
+def _on_axis(peaks: PeakList, positions: FloatArray, prior: ShiftPrior) -> FloatArray:
     """Return positions in the list's unit on the scoring coordinate."""
     axis = make_axis(peaks, prior)
     order = np.argsort(peaks.position)
@@ -98,8 +101,8 @@ def _on_axis(peaks: PeakList, positions: np.ndarray, prior: ShiftPrior) -> np.nd
     ln_position = np.log(np.asarray(positions, dtype=np.float64))
     known = np.log(peaks.position[order])
     if len(known) < 2:
-        return axis.x[:1] + 0.0 * ln_position
-    return np.interp(ln_position, known, axis.x[order])
+        return np.asarray(axis.x[:1] + 0.0 * ln_position)
+    return np.asarray(np.interp(ln_position, known, axis.x[order]))
 
 
 def _with_standard(entries: Entries, settings: MatchSettings) -> tuple[Entries, tuple[int, ...]]:

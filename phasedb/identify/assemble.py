@@ -234,7 +234,7 @@ class Assembler:
         if not self.entries.has_structure(index):
             return None
         n, strength = self.entries.pattern(index)
-        return n[strength > 1e-6 * strength.max()]
+        return np.asarray(n[strength > 1e-6 * strength.max()])
 
     def _share(self, fit: Fitted, claims: FloatArray) -> float | None:
         if self.axis.ln_intensity is None:
@@ -395,8 +395,8 @@ class Assembler:
     def _claims_on(
         self, observed: int, weights: FloatArray, covered: float, empty: float
     ) -> tuple[tuple[Claim, ...], float]:
-        total: dict[tuple[str, str, int], float] = {}
-        first: dict[tuple[str, str, int], tuple[float, tuple[tuple[int, int, int], ...]]] = {}
+        total: dict[tuple[str, ClaimKind, int], float] = {}
+        first: dict[tuple[str, ClaimKind, int], tuple[float, tuple[tuple[int, int, int], ...]]] = {}
         unexplained = empty
         pool = self.search.candidates.pool.lines
         for item, weight in zip(self.fitted_sets, weights, strict=True):
@@ -425,7 +425,7 @@ class Assembler:
                 Claim(
                     name=key[0],
                     hkl=hkl,
-                    kind=cast("ClaimKind", key[1]),
+                    kind=key[1],
                     delta_two_theta_deg=delta if self.axis.is_angle else None,
                     delta_relative=-delta / slope if self.axis.is_angle else -delta,
                     probability=min(chance, 1.0),
@@ -440,12 +440,7 @@ class Assembler:
         lattice = LATTICE_TYPES[self.search.candidates.lattice_of[member]]
         # the same unlisted phase has the same name in every set: a to the width of a place
         a = float(np.exp(round(float(fit.ln_a[place]) / SAME_PLACE) * SAME_PLACE))
-        best = self._unlisted_labels.get((lattice, round(a, 2)))
-        return best or f"unlisted {lattice} {a:.2f}"
-
-    @property
-    def _unlisted_labels(self) -> dict[tuple[str, float], str]:
-        return {}
+        return f"unlisted {lattice} {a:.2f}"
 
     def _ledger_line(
         self, number: int, claims: tuple[Claim, ...], unexplained: float, corrected_x: float

@@ -101,26 +101,26 @@ class Axis:
             return ln_n - ln_a
         sine = np.exp(ln_n - ln_a) * (self.wavelength / 2.0)
         with np.errstate(invalid="ignore"):
-            return np.degrees(2.0 * np.arcsin(sine))
+            return np.asarray(np.degrees(2.0 * np.arcsin(sine)), dtype=np.float64)
 
     def slope(self, x_true: FloatArray) -> FloatArray:
         """Return dx / d ln a at true positions (degrees, or -1)."""
         if self.wavelength is None:
             return np.full_like(x_true, -1.0)
-        return -2.0 * np.degrees(np.tan(np.radians(x_true) / 2.0))
+        return np.asarray(-2.0 * np.degrees(np.tan(np.radians(x_true) / 2.0)))
 
     def displacement_basis(self, x_true: FloatArray) -> FloatArray:
         """Return dx/ds for displacement s in mm: -(2/R)(180/pi) cos(theta); zero on ln d."""
         if self.wavelength is None:
             return np.zeros_like(x_true)
-        return -(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0))
+        return np.asarray(-(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0)))
 
     def ln_d(self, x_true: FloatArray) -> FloatArray:
         """Return ln d (Å) of true positions."""
         if self.wavelength is None:
             return -x_true
         half = np.radians(np.clip(x_true, 1e-3, 179.9)) / 2.0
-        return np.log(self.wavelength / 2.0) - np.log(np.sin(half))
+        return np.asarray(np.log(self.wavelength / 2.0) - np.log(np.sin(half)))
 
 
 def _ghosts(radiation: Radiation | None) -> tuple[Ghost, ...]:

@@ -52,7 +52,7 @@ def expected_by_chance(
 def _windowed(values: FloatArray, reach: int) -> FloatArray:
     """Return the running maximum over 2 reach + 1 points."""
     padded = np.pad(values, reach, constant_values=-np.inf)
-    return np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1).max(axis=1)
+    return np.asarray(np.lib.stride_tricks.sliding_window_view(padded, 2 * reach + 1).max(axis=1))
 
 
 def share_at_least(values: FloatArray, score: float) -> float:

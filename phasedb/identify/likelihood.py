@@ -93,7 +93,7 @@ class Evaluated:
 def log_student(value: FloatArray, scale: FloatArray, tail: float) -> FloatArray:
     """Return the log density of Student's t with `tail` 3 degrees of freedom and the given scale."""
     constant = np.log(2.0 / (np.sqrt(3.0) * np.pi))  # Gamma(2)/(Gamma(3/2) sqrt(3 pi))
-    return constant - np.log(scale) - 0.5 * (tail + 1.0) * np.log1p((value / scale) ** 2 / tail)
+    return np.asarray(constant - np.log(scale) - 0.5 * (tail + 1.0) * np.log1p((value / scale) ** 2 / tail))
 
 
 def log_height_density(residual: FloatArray) -> FloatArray:
@@ -105,7 +105,7 @@ def log_height_density(residual: FloatArray) -> FloatArray:
         + HEIGHT_MIX[1] * norm / wide * np.exp(-0.5 * (residual / wide) ** 2)
         + HEIGHT_MIX[2] / 7.0
     )
-    return np.log(density)
+    return np.asarray(np.log(density))
 
 
 def ln_floor(axis: Axis) -> float:
@@ -157,7 +157,7 @@ class _Fit:
         self.ln_share = np.full((self.n_sets, self.m), start)
         self.rate = np.full(self.n_sets, max(1.0, self.n / 4.0))
         self.use_heights = False
-        self.x_line = np.empty(0)
+        self.x_line = np.empty((0, 0, 0))
 
     # -- predicted lines -------------------------------------------------------------------------
 
@@ -314,8 +314,8 @@ class _Fit:
 
     # -- updates ---------------------------------------------------------------------------------
 
-    def normal_equations(self) -> tuple[FloatArray, FloatArray]:
-        """Return the information matrix and right-hand side of a Gauss-Newton step, priors included."""
+    def normal_equations(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return information matrix and right-hand side of a Gauss-Newton step, and the lines' part of the matrix."""
         axis = self.axis
         weight = self.claims * self.inner / self.sigma2[:, None, :, None]
         weight = weight * np.where(self.near_plain, 1.0, 0.1)
@@ -345,6 +345,7 @@ class _Fit:
             matrix[:, 1, at] = matrix[:, at, 1] = wbu[:, member]
             matrix[:, at, at] = wuu[:, member]
             right[:, at] = total(weight * slope * self.delta)[:, member]
+        of_lines = matrix.copy()
         offset = self.phi - axis.shift_mean
         precision = (SHIFT_TAIL + 1.0) / (SHIFT_TAIL * axis.shift_scale**2 + offset**2)
         drift = self.drift()
@@ -365,31 +366,36 @@ class _Fit:
             matrix[:, at, at] += drift_precision[:, member]
             pull = np.where(self.unlisted[:, member], 0.0, drift[:, member])
             right[:, at] -= drift_precision[:, member] * pull
-        return matrix, right
+        return matrix, right, of_lines
 
     def drift(self) -> FloatArray:
         """Return ln a minus the nearest end of the stated range (or the stored value); 0 inside the range."""
-        return self.u - np.clip(self.u, self.low, self.high)
+        return np.asarray(self.u - np.clip(self.u, self.low, self.high))
 
     def step(self) -> None:
         """Move shifts, lattice constants and the noise scale one step."""
-        matrix, right = self.normal_equations()
+        matrix, right, of_lines = self.normal_equations()
         change = np.linalg.solve(matrix, right[..., None])[..., 0]
         limit = 0.12 if self.axis.is_angle else 0.01
         self.phi[:, 0] += np.clip(change[:, 0], -limit, limit)
         self.phi[:, 1] += np.clip(change[:, 1], -0.2, 0.2)
         self.u += np.clip(change[:, 2:], -3e-3, 3e-3)
-        gradient, curvature = self.noise_terms()
+        gradient, curvature = self.noise_terms(matrix, of_lines)
         self.ln_sigma -= np.clip(gradient / curvature, -0.7, 0.7)
         self.rate = np.clip(self.background.sum(axis=1) + 0.3, BACKGROUND[0], None)
 
-    def noise_terms(self) -> tuple[FloatArray, FloatArray]:
-        """Return gradient and curvature, in ln sigma, of minus the expected log posterior."""
+    def noise_terms(self, matrix: FloatArray, of_lines: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Return gradient and curvature, in ln sigma, of minus the expected log posterior.
+
+        Fitted parameters take up degrees of freedom: their effective number is the trace of A^-1 A_lines.
+        """
         axis = self.axis
         share = np.exp(2.0 * self.ln_sigma)[:, None] / self.sigma2
         weight = self.claims.sum(axis=(1, 3))
         misfit = (self.claims * self.inner * self.delta**2).sum(axis=(1, 3)) / self.sigma2
-        gradient = (share * (weight - misfit)).sum(axis=1)
+        fitted = np.trace(np.linalg.solve(matrix, of_lines), axis1=1, axis2=2)
+        mean_share = (share * weight).sum(axis=1) / np.maximum(weight.sum(axis=1), 1e-9)
+        gradient = (share * (weight - misfit)).sum(axis=1) - fitted * mean_share
         gradient += (self.ln_sigma - np.log(axis.noise_center)) / axis.noise_spread**2
         curvature = (2.0 * share**2 * np.maximum(misfit, 0.3 * weight)).sum(axis=1)
         return gradient, curvature + 1.0 / axis.noise_spread**2
@@ -444,7 +450,7 @@ class _Fit:
         self.ln_share = np.take_along_axis(steps, best[..., None], axis=2)[..., 0]
         self.use_heights = axis.ln_intensity is not None
         top = value.max(axis=2)
-        return np.log(np.exp(value - top[..., None]).sum(axis=2)) + cell
+        return np.asarray(np.log(np.exp(value - top[..., None]).sum(axis=2)) + cell)
 
     # -- evidence --------------------------------------------------------------------------------
 
@@ -461,9 +467,9 @@ class _Fit:
         rates = BACKGROUND[None, :, None] / axis.span
         levels = np.log(rates + self.explained[:, None, :]).sum(axis=2) - BACKGROUND + BACKGROUND_LN_PRIOR
         log_likelihood = np.logaddexp.reduce(levels, axis=1) + unseen
-        matrix, _ = self.normal_equations()
+        matrix, _, of_lines = self.normal_equations()
         _, log_det = np.linalg.slogdet(matrix)
-        _, noise_curvature = self.noise_terms()
+        _, noise_curvature = self.noise_terms(matrix, of_lines)
         prior = log_student(self.phi - axis.shift_mean, axis.shift_scale, SHIFT_TAIL).sum(axis=1)
         drift = self.drift()
         listed = log_student(drift, np.maximum(self.scale, 1e-12), DRIFT_TAIL)
@@ -484,7 +490,7 @@ class _Fit:
             ln_a=self.u,
             ln_sigma=self.ln_sigma,
             ln_share=self.ln_share,
-            covariance=np.linalg.inv(matrix),
+            covariance=np.asarray(np.linalg.inv(matrix), dtype=np.float64),
             background=self.background,
             claims=self.claims,
             claim_line=self.index,

@@ -6,13 +6,13 @@ A candidate is a listed phase, or an unlisted one of some lattice type, place on
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
 
-from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType, allowed_n, multiplicity
-from phasedb.identify.axis import KIND_ALPHA2, KIND_LINE, Axis
+from phasedb.crystal.lattice import LatticeType, allowed_n, multiplicity
+from phasedb.identify.axis import KIND_ALPHA2, Axis
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -57,19 +57,17 @@ def stack(tables: list[LineTable]) -> LineTable:
     """Return several tables as one, padded to the longest."""
     width = max(table.n.shape[1] for table in tables)
 
-    def column(values: list[NDArray[np.generic]], pad: float) -> NDArray[np.generic]:
-        padded = [
-            np.pad(value, ((0, 0), (0, width - value.shape[1])), constant_values=pad)  # type: ignore[call-overload]
-            for value in values
-        ]
-        return np.concatenate(padded)
+    def column(values: list[NDArray[Any]], pad: float) -> NDArray[Any]:
+        return np.concatenate(
+            [np.pad(value, ((0, 0), (0, width - value.shape[1])), constant_values=pad) for value in values]
+        )
 
     return LineTable(
-        n=column([t.n for t in tables], 0),  # type: ignore[arg-type]
-        half_ln_n=column([t.half_ln_n for t in tables], np.inf),  # type: ignore[arg-type]
-        ln_height=column([t.ln_height for t in tables], -np.inf),  # type: ignore[arg-type]
-        frequency=column([t.frequency for t in tables], 0.0),  # type: ignore[arg-type]
-        kind=column([t.kind for t in tables], 0),  # type: ignore[arg-type]
+        n=column([t.n for t in tables], 0),
+        half_ln_n=column([t.half_ln_n for t in tables], np.inf),
+        ln_height=column([t.ln_height for t in tables], -np.inf),
+        frequency=column([t.frequency for t in tables], 0.0),
+        kind=column([t.kind for t in tables], 0),
     )
 
 
@@ -83,7 +81,7 @@ def polarisation_factor(axis: Axis, x_true: FloatArray) -> FloatArray:
     if not axis.is_angle:
         return np.ones_like(x_true)
     theta = np.radians(np.clip(x_true, 1.0, 178.0)) / 2.0
-    return (1.0 + np.cos(2.0 * theta) ** 2) / (np.sin(theta) ** 2 * np.cos(theta))
+    return np.asarray((1.0 + np.cos(2.0 * theta) ** 2) / (np.sin(theta) ** 2 * np.cos(theta)))
 
 
 def generic_strengths(lattice: LatticeType, n_max: int) -> tuple[IntArray, FloatArray]:
@@ -110,7 +108,7 @@ def make_lines(
     count = len(patterns)
     lengths = np.array([len(pattern[0]) for pattern in patterns])
     longest = int(lengths.max(initial=1))
-    filled = np.arange(longest)[None, :] < lengths[:, None]
+    filled: NDArray[np.bool_] = np.arange(longest)[None, :] < lengths[:, None]
     n = np.zeros((count, longest), dtype=np.int64)
     strength = np.zeros((count, longest))
     if count:
@@ -177,28 +175,28 @@ def _sorted_table(
     order = np.argsort(half, axis=1, kind="stable")
     with np.errstate(divide="ignore"):
         ln_height = np.log(height)
-    columns = [np.take_along_axis(column, order, axis=1) for column in (n, half, ln_height, frequency, kind)]
-    return LineTable(*columns)  # type: ignore[arg-type]
+
+    def ordered(column: NDArray[Any]) -> NDArray[Any]:
+        return np.take_along_axis(column, order, axis=1)
+
+    return LineTable(ordered(n), ordered(half), ordered(ln_height), ordered(frequency), ordered(kind))
 
 
 def _with_ghosts(axis: Axis, table: LineTable) -> LineTable:
     height = np.exp(table.ln_height)
-    columns = [[table.n], [table.half_ln_n], [height], [table.frequency], [table.kind]]
+    n, half, heights = [table.n], [table.half_ln_n], [height]
+    frequency, kind = [table.frequency], [table.kind]
     for ghost in axis.ghosts:
         parent = height >= GHOST_PARENT * (0.3 if ghost.kind == KIND_ALPHA2 else 1.0)
-        half = np.where(parent, table.half_ln_n + np.log(ghost.wavelength_ratio), np.inf)
-        columns[0].append(table.n)
-        columns[1].append(half)
-        columns[2].append(np.where(parent, height * ghost.height, 0.0))
-        columns[3].append(np.where(parent, ghost.frequency, 0.0))
-        columns[4].append(np.full(height.shape, ghost.kind, dtype=np.int8))
-    joined = [np.concatenate(column, axis=1) for column in columns]
-    return _sorted_table(joined[0], joined[1], joined[2], joined[3], joined[4].astype(np.int8))
-
-
-def lattice_index(lattice: LatticeType) -> int:
-    """Return the index of a lattice type in LATTICE_TYPES."""
-    return LATTICE_TYPES.index(lattice)
-
-
-__all__ = ["KIND_LINE", "LineTable", "generic_strengths", "make_lines", "polarisation_factor", "stack"]
+        n.append(table.n)
+        half.append(np.where(parent, table.half_ln_n + np.log(ghost.wavelength_ratio), np.inf))
+        heights.append(np.where(parent, height * ghost.height, 0.0))
+        frequency.append(np.where(parent, ghost.frequency, 0.0))
+        kind.append(np.full(height.shape, ghost.kind, dtype=np.int8))
+    return _sorted_table(
+        np.concatenate(n, axis=1),
+        np.concatenate(half, axis=1),
+        np.concatenate(heights, axis=1),
+        np.concatenate(frequency, axis=1),
+        np.concatenate(kind, axis=1),
+    )

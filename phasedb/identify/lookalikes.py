@@ -8,7 +8,7 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from phasedb.crystal.lattice import LATTICE_TYPES, hkl_text
+from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType, hkl_text
 from phasedb.identify.axis import KIND_LINE, Axis
 from phasedb.identify.entries import Entries
 from phasedb.identify.likelihood import DETECTION_SLOPE, ln_floor
@@ -49,18 +49,18 @@ def _near(entries: Entries, index: int, reading: Reading) -> list[int]:
     """Return entries that could agree: same lattice type and a, or a combination that shares a line sequence."""
     lattice = LATTICE_TYPES[int(entries.lattice[index])]
     # F without odd lines is P(a/2), and I(a) shares its first lines with P(a/sqrt 2) (METHODS section 4)
-    relatives = [(lattice, 0.0)]
-    relatives += {
-        "F": [("P", -np.log(2.0)), ("I", -0.5 * np.log(2.0))],
-        "P": [("F", np.log(2.0)), ("I", 0.5 * np.log(2.0))],
-        "I": [("P", -0.5 * np.log(2.0)), ("F", 0.5 * np.log(2.0))],
-    }[lattice]
+    double, diagonal = float(np.log(2.0)), 0.5 * float(np.log(2.0))
+    relatives: dict[LatticeType, list[tuple[LatticeType, float]]] = {
+        "F": [("F", 0.0), ("P", -double), ("I", -diagonal)],
+        "P": [("P", 0.0), ("F", double), ("I", diagonal)],
+        "I": [("I", 0.0), ("P", -diagonal), ("F", diagonal)],
+    }
     near = np.zeros(len(entries), dtype=bool)
-    for name, offset in relatives:
+    for name, offset in relatives[lattice]:
         target = reading.ln_a + offset
         drift = target - np.clip(target, entries.ln_a_low, entries.ln_a_high)
         reach = DRIFT_REACH * entries.drift_scale + AGREE * reading.ln_a_esd
-        near |= (entries.lattice == LATTICE_TYPES.index(name)) & (np.abs(drift) < reach)  # type: ignore[arg-type]
+        near |= (entries.lattice == LATTICE_TYPES.index(name)) & (np.abs(drift) < reach)
     return [int(value) for value in np.flatnonzero(near)]
 
 
@@ -127,7 +127,7 @@ def what_separates(axis: Axis, entries: Entries, one: int, other: int, reading: 
 
 
 def _separating_line(axis: Axis, entries: Entries, one: int, other: int) -> str | None:
-    """Return the line with the best chance to separate two entries at their stored a, to 2theta = 150 degrees."""
+    """Return the line that best separates two entries at their stored a, up to 2theta = 150 degrees."""
     lattice = LATTICE_TYPES[int(entries.lattice[one])]
     if entries.lattice[one] != entries.lattice[other]:
         return _extra_line(axis, entries, one, other)
@@ -168,6 +168,7 @@ def _extra_line(axis: Axis, entries: Entries, one: int, other: int) -> str | Non
                 where = f"{place:.2f}° 2theta" if axis.is_angle else f"d = {np.exp(-place):.4f} Å"
                 best = (
                     height,
-                    f"line {name} near {where}, which only {owner} has ({100 * np.exp(height):.1f} % of its strongest)",
+                    f"line {name} near {where}, which only {owner} has "
+                    f"({100 * np.exp(height):.1f} % of its strongest)",
                 )
     return best[1] if best else None

@@ -128,7 +128,7 @@ class LedgerLine:
 
 @dataclass(frozen=True, slots=True)
 class AxisCurve:
-    """Evidence along the lattice-constant axis for one lattice type: natural-log evidence against background."""
+    """Votes along the ln a axis for one lattice type: natural log of evidence against background."""
 
     lattice_type: LatticeType
     ln_a: tuple[float, ...]

@@ -56,11 +56,11 @@ class Fitted:
 
     @property
     def phi(self) -> FloatArray:
-        return self.batch.phi[self.row]
+        return np.asarray(self.batch.phi[self.row])
 
     @property
     def ln_a(self) -> FloatArray:
-        return self.batch.ln_a[self.row]
+        return np.asarray(self.batch.ln_a[self.row])
 
     @property
     def ln_sigma(self) -> float:
