@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import replace
 from typing import TYPE_CHECKING, Final
 
+from phasedb.measured.building import RANGE_REMARK
+
 if TYPE_CHECKING:
     from phasedb.characterise.refined import Refinement
     from phasedb.characterise.shift_model import PositionModel
@@ -16,7 +18,8 @@ _MATTERS: Final = 0.95
 
 def remarks_on(result: Refinement, peaks: PeakList, model: PositionModel) -> Refinement:
     """Return the refinement with its cautions."""
-    said = [*peaks.notes, *_on_lines(result, peaks), *_on_blends(result, model)]
+    notes = [note for note in peaks.notes if not note.startswith(RANGE_REMARK)]
+    said = [*notes, *_on_lines(result, peaks), *_on_blends(result, model)]
     if result.zero_deg is not None:
         said += _on_shifts(result, model)
     said += _on_extrapolations(result)

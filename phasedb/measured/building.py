@@ -23,6 +23,8 @@ MOST_LINES: Final = 2000
 """A list with more lines is a scan (DESIGN section 5)."""
 RANGE_MARGIN: Final = 0.02
 """A range that was not given: the span of the lines, widened on each side by this share of it."""
+RANGE_REMARK: Final = "measured range not given"
+"""How the caution about an assumed range starts."""
 
 UNIT_WORDS: Final[dict[PositionUnit, tuple[str, str]]] = {
     "two-theta": ("2theta", "degrees"),
@@ -106,7 +108,7 @@ def build_peak_list(
     if assumed:
         word, per = UNIT_WORDS[unit]
         remarks.append(
-            f"measured range not given: assumed {low:.4g} to {high:.4g} {per} ({word}); "
+            f"{RANGE_REMARK}: assumed {low:.4g} to {high:.4g} {per} ({word}); "
             "lines missing outside the lines listed cannot count"
         )
     columns = merge_close(values, d, two_theta, strength, scaled_esd, scaled_fwhm, remarks)

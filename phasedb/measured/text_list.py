@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Final
 
 from phasedb.errors import InputError, at
@@ -57,10 +58,11 @@ def read_text_list(text: str, source: str, *, unit: PositionUnit | None) -> RawL
         index = columns.get(name)
         if index is None:
             return None
-        return [
-            cell_number(row[index], source, name, lowest=0.0) if index < len(row) else float("nan")
+        values = [
+            cell_number(row[index], source, name, lowest=0.0) if index < len(row) else math.nan
             for row in table.rows
         ]
+        return None if all(math.isnan(value) for value in values) else values
 
     position = []
     index = columns["position"]
