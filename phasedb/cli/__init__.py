@@ -1,16 +1,19 @@
-"""The command line. Only the standard library and click are imported here; each command loads when it runs."""
+"""The command line. Only the standard library and click are imported here; a command loads when it runs."""
 
 from __future__ import annotations
 
 import os
 import sys
 from importlib import import_module
-from typing import Any, NoReturn
+from typing import TYPE_CHECKING, Any, NoReturn
 
 import click
 
 from phasedb import __version__
 from phasedb.errors import ExitCode, InputError, PhasedbError
+
+if TYPE_CHECKING:
+    from click.shell_completion import CompletionItem
 
 # name: (module, attribute, short help). The help text lives here so that --help imports no command.
 COMMANDS: dict[str, tuple[str, str, str]] = {
@@ -73,10 +76,22 @@ class LazyGroup(click.Group):
         with formatter.section("Commands"):
             formatter.write_dl([(name, text) for name, (_, _, text) in COMMANDS.items()])
 
+    def shell_complete(self, ctx: click.Context, incomplete: str) -> list[CompletionItem[Any]]:
+        from click.shell_completion import CompletionItem
+
+        found = [
+            CompletionItem(name, help=text)
+            for name, (_, _, text) in COMMANDS.items()
+            if name.startswith(incomplete)
+        ]
+        return [*found, *click.Command.shell_complete(self, ctx, incomplete)]
+
     def resolve_command(
         self, ctx: click.Context, args: list[str]
     ) -> tuple[str | None, click.Command | None, list[str]]:
         name = args[0] if args else ""
+        if ctx.resilient_parsing:  # a shell completes: say nothing of a word that is not finished
+            return super().resolve_command(ctx, args)
         if name and not name.startswith("-") and name not in COMMANDS:
             from difflib import get_close_matches
 
@@ -109,6 +124,10 @@ def _stop(text: str, code: int) -> NoReturn:
 def main(argv: list[str] | None = None) -> NoReturn:
     """Run the command line; every error of ours becomes one line on stderr and its exit code."""
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # a thread per core doubles NumPy's import time
+    if "_PHASEDB_COMPLETE" in os.environ:
+        from phasedb.cli.completion import register
+
+        register()
     debug = "--debug" in (sys.argv[1:] if argv is None else argv)
     for stream in (sys.stdout, sys.stderr):
         reconfigure: Any = getattr(stream, "reconfigure", None)
@@ -137,7 +156,8 @@ def main(argv: list[str] | None = None) -> NoReturn:
         if debug:
             raise
         _stop(
-            f"unexpected fault: {type(error).__name__}: {error}; this is a bug; run again with --debug and report it",
+            f"unexpected fault: {type(error).__name__}: {error};"
+            " this is a bug; run again with --debug and report it",
             ExitCode.FAULT,
         )
     raise SystemExit(int(result) if isinstance(result, int) else 0)
