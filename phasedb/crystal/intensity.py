@@ -101,7 +101,7 @@ def _site_sums(name: str, position: tuple[float, float, float], n_bucket: int) -
 def _coefficients(symbol: str, probe: str) -> tuple[FloatArray, FloatArray, float, int]:
     import gemmi
 
-    element = gemmi.Element(symbol)
+    element = gemmi.Element("H" if symbol in "DT" else symbol)
     held = element.c4322 if probe == "electron" else element.it92
     if held is None:
         raise InputError(
