@@ -21,6 +21,7 @@ from phasedb.identify.axis import KIND_LINE, Axis, make_axis
 from phasedb.identify.chance import share_at_least
 from phasedb.identify.curve import Cell, vote
 from phasedb.identify.entries import prepare
+from phasedb.identify.likelihood import N_SHIFT
 from phasedb.identify.merit import merit_f, merit_m, possible_lines
 from phasedb.identify.result import AxisCurve, Match, MeritF, MeritM
 from phasedb.identify.search import SAME_PLACE, Fitted, Search
@@ -174,7 +175,7 @@ def _solution(axis: Axis, search: Search, fit: Fitted, probability: float) -> So
     return Solution(
         lattice_type=lattice,
         a_angstrom=a,
-        a_esd_angstrom=a * float(np.sqrt(max(covariance[2, 2], 0.0))),
+        a_esd_angstrom=a * float(np.sqrt(max(covariance[N_SHIFT, N_SHIFT], 0.0))),
         probability=probability,
         merit_f=merit_f(n_used, delta_used, possible) if axis.is_angle else None,
         merit_m=merit_m(n_used, d_used, a, possible),
@@ -188,7 +189,7 @@ def _solution(axis: Axis, search: Search, fit: Fitted, probability: float) -> So
 def _expected_by_chance(axis: Axis, fit: Fitted, lattice: int, ln_a: float) -> float:
     """Return the number of other places of the axis expected to collect as many votes by luck."""
     base = np.full(len(axis.x), float(fit.batch.background_rate[fit.row]) / axis.span)
-    cell = Cell((float(fit.phi[0]), float(fit.phi[1])), float(np.exp(fit.ln_sigma)), 0.0)
+    cell = Cell(fit.shift_terms, float(np.exp(fit.ln_sigma)), 0.0)
     curve = vote(axis, cell, base, np.zeros(len(axis.x)))
     grid = curve.start + curve.step * np.arange(curve.values.shape[1])
     score = float(curve.values[lattice][np.abs(grid - ln_a) < max(3 * curve.step, 1.5e-3)].max())

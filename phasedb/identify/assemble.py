@@ -14,6 +14,7 @@ from phasedb.identify.axis import KIND_ALPHA2, KIND_BETA, KIND_LINE, KIND_TUNGST
 from phasedb.identify.chance import expected_by_chance
 from phasedb.identify.entries import Entries
 from phasedb.identify.foreign import ForeignLines
+from phasedb.identify.likelihood import N_SHIFT
 from phasedb.identify.lookalikes import Reading, find_look_alikes, what_separates
 from phasedb.identify.merit import merit_f, merit_m, possible_lines
 from phasedb.identify.posterior import Posterior
@@ -168,7 +169,7 @@ class Assembler:
         covariance = fit.batch.covariance[fit.row]
         return Reading(
             ln_a=float(fit.ln_a[place]),
-            ln_a_esd=float(np.sqrt(max(covariance[2 + place, 2 + place], 0.0))),
+            ln_a_esd=float(np.sqrt(max(covariance[N_SHIFT + place, N_SHIFT + place], 0.0))),
             sigma=float(np.exp(fit.ln_sigma)),
             ln_share=float(fit.batch.ln_share[fit.row, place]),
         )
@@ -258,19 +259,20 @@ class Assembler:
         n = lines.n[member][which][use]
         delta = fit.batch.claim_delta[row, place][observed, best][use]
         corrected = self._corrected_x(fit)[use]
-        # a blended doublet is measured on the mean wavelength: d from the residual, not from the raw position
+        # d on the wavelength of the list: the prediction, which knows of blends, plus the deviation
         true = self.axis.positions(lines.half_ln_n[member][which][use], np.array(float(fit.ln_a[place])))
         d = np.exp(self.axis.ln_d(np.where(np.isfinite(true), true + delta, corrected)))
         order = np.argsort(n, kind="stable")
         return n[order], delta[order], d[order]
 
     def _corrected_x(self, fit: Fitted | None) -> FloatArray:
-        return self.axis.x - self._shift_at_lines(fit)
+        x = self.axis.x - self._shift_at_lines(fit)
+        return np.clip(x, 0.05, 179.9) if self.axis.is_angle else x
 
     def _shift_at_lines(self, fit: Fitted | None) -> FloatArray:
         phi = self.axis.shift_mean if fit is None else fit.phi
-        basis = self.axis.displacement_basis(self.axis.x)
-        return np.asarray(phi[0] + phi[1] * basis, dtype=np.float64)
+        # the doublet's offset is part of where a peak lies, not of the instrument's shift
+        return self.axis.shift(self.axis.x, np.array([phi[0], phi[1], 0.0]))
 
     def _merits(
         self,

@@ -59,14 +59,18 @@ class Axis:
         Measured range on x.
     wavelength : float or None
         Å; None on the ln d coordinate.
-    shift_scale : (2,)
-        Student-t scales of the two shift terms: zero and displacement; on ln d, the common scale and nothing.
+    shift_mean, shift_scale : (3,)
+        Student-t centres and scales of the three shift terms: zero (degrees), displacement (mm), and the part
+        of the unresolved doublet's offset that the list's peaks show; on ln d, the common scale and nothing.
     noise_center, noise_spread : float
         Median of the list's noise scale and its spread in ln.
     resolution : float
         Lines of one phase or set closer than this are one line.
-    blend_ratio : float or None
-        Mean over K-alpha1 wavelength, where a line may be the unresolved doublet.
+    doublet_ratio, doublet_width : float
+        ln of (mean / K-alpha1 wavelength), signed so that the offset is added to the positions predicted; 0
+        without a doublet. The width (degrees) at which the two lines part.
+    doublet_resolved : bool
+        True where the wavelength is the mean, so that it is the resolved lines that are offset.
     blocked : tuple of (low, high)
         Stretches hidden by foreign lines: nothing is expected there.
     """
@@ -83,7 +87,9 @@ class Axis:
     noise_center: float
     noise_spread: float
     resolution: float
-    blend_ratio: float | None
+    doublet_ratio: float
+    doublet_width: float
+    doublet_resolved: bool
     ghosts: tuple[Ghost, ...]
     blocked: tuple[tuple[float, float], ...] = ()
 
@@ -115,6 +121,27 @@ class Axis:
             return np.zeros_like(x_true)
         return np.asarray(-(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0)))
 
+    def bases(self, x_true: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return dx/d(shift term) at true positions for the three shift terms."""
+        return np.ones_like(x_true), self.displacement_basis(x_true), self.doublet_basis(x_true)
+
+    def doublet_basis(self, x_true: FloatArray) -> FloatArray:
+        """Return the offset of a peak of the doublet, in degrees.
+
+        Where the splitting is small beside the width, a peak is the weighted mean of K-alpha1 and K-alpha2;
+        where it is large, K-alpha1: a smooth step between (its form: common practice, no source).
+        """
+        if self.doublet_ratio == 0.0:
+            return np.zeros_like(x_true)
+        offset = np.degrees(2.0 * np.tan(np.radians(x_true) / 2.0)) * self.doublet_ratio
+        parted = (3.0 * np.abs(offset) / self.doublet_width) ** 4
+        share = parted / (1.0 + parted) if self.doublet_resolved else 1.0 / (1.0 + parted)
+        return np.asarray(offset * share)
+
+    def shift(self, x_true: FloatArray, phi: FloatArray) -> FloatArray:
+        """Return the sum of the shift terms `phi` (3,) at true positions."""
+        return np.asarray(sum(value * basis for value, basis in zip(phi, self.bases(x_true), strict=True)))
+
     def ln_d(self, x_true: FloatArray) -> FloatArray:
         """Return ln d (Å) of true positions."""
         if self.wavelength is None:
@@ -135,6 +162,27 @@ def _ghosts(radiation: Radiation | None) -> tuple[Ghost, ...]:
     if radiation.convention in ("doublet", "literal") and abs(base / lines.alpha1 - 1.0) < 2e-4:
         found.append(Ghost(KIND_ALPHA2, lines.alpha2 / base, 0.15, 0.5))
     return tuple(found)
+
+
+@dataclass(frozen=True, slots=True)
+class _Doublet:
+    ratio: float
+    resolved: bool
+    usual: float
+    spread: float
+
+
+def _doublet(radiation: Radiation) -> _Doublet:
+    """Return how peaks of this radiation may be offset by the doublet, and how much they usually are."""
+    lines = radiation.lines
+    if lines is None or radiation.convention in ("alpha1", "electron"):
+        return _Doublet(0.0, False, 0.0, NEVER)
+    step = float(np.log(lines.mean / lines.alpha1))
+    nearer_mean = abs(radiation.wavelength_angstrom / lines.mean - 1.0) < 3e-4
+    if nearer_mean:
+        return _Doublet(-step, True, 0.3, 0.4)
+    usual = 0.6 if radiation.convention == "doublet" else 0.4
+    return _Doublet(step, False, usual, 0.4)
 
 
 def is_angle_scored(peaks: PeakList) -> bool:
@@ -163,9 +211,7 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         assert radiation is not None and peaks.two_theta_deg is not None
         extra = np.hypot(esd, WIDTH_TO_NOISE * fwhm)
         typical_width = float(np.median(fwhm)) if fwhm.any() else 0.0
-        blend = None
-        if radiation.convention == "doublet" and radiation.lines is not None:
-            blend = radiation.lines.mean / radiation.lines.alpha1
+        doublet = _doublet(radiation)
         return Axis(
             x=peaks.two_theta_deg,
             ln_intensity=ln_intensity,
@@ -174,12 +220,14 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
             high=high,
             wavelength=radiation.wavelength_angstrom,
             radius_mm=radius,
-            shift_mean=np.array([prior.zero_deg, prior.displacement_mm]),
-            shift_scale=np.array([prior.zero_scale_deg, prior.displacement_scale_mm]),
+            shift_mean=np.array([prior.zero_deg, prior.displacement_mm, doublet.usual]),
+            shift_scale=np.array([prior.zero_scale_deg, prior.displacement_scale_mm, doublet.spread]),
             noise_center=NOISE_CENTER_DEG,
             noise_spread=NOISE_SPREAD,
             resolution=max(0.03, 0.5 * typical_width),
-            blend_ratio=blend,
+            doublet_ratio=doublet.ratio,
+            doublet_width=typical_width or USUAL_WIDTH_DEG,
+            doublet_resolved=doublet.resolved,
             ghosts=_ghosts(radiation),
         )
     relative = np.ones(len(peaks))
@@ -195,12 +243,14 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         high=high,
         wavelength=None,
         radius_mm=radius,
-        shift_mean=np.zeros(2),
-        shift_scale=np.array([SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST, 1e-9]),
+        shift_mean=np.zeros(3),
+        shift_scale=np.array([SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST, NEVER, NEVER]),
         noise_center=NOISE_CENTER_RELATIVE_CAMERA if is_camera else NOISE_CENTER_RELATIVE,
         noise_spread=NOISE_SPREAD,
         resolution=2e-3 if is_camera else 5e-4,
-        blend_ratio=None,
+        doublet_ratio=0.0,
+        doublet_width=1.0,
+        doublet_resolved=False,
         ghosts=(),
     )
 
@@ -247,3 +297,5 @@ NOISE_CENTER_RELATIVE_CAMERA = 3e-3
 SCALE_OF_CAMERA = 5e-3
 SCALE_OF_D_LIST = 7e-4
 WIDTH_TO_NOISE = 0.06
+USUAL_WIDTH_DEG = 0.15
+NEVER = 1e-9  # the scale of a term that does not exist

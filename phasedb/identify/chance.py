@@ -31,7 +31,7 @@ def expected_by_chance(
     base = fit.batch.base[row] * np.maximum(1.0 - own, 1e-6)
     background = fit.batch.background[row]
     explained = np.clip(1.0 - background - own, 0.0, 1.0)
-    cell = Cell((float(fit.phi[0]), float(fit.phi[1])), float(np.exp(fit.ln_sigma)), 0.0)
+    cell = Cell(fit.shift_terms, float(np.exp(fit.ln_sigma)), 0.0)
     curve = vote(axis, cell, base, explained)
     ln_a = float(fit.ln_a[place])
     grid = curve.start + curve.step * np.arange(curve.values.shape[1])

@@ -32,7 +32,7 @@ _RANK_P: Final = {"P": (0.62, 14.0), "I": (0.68, 10.0), "F": (0.66, 9.0)}
 class Cell:
     """One assumption about the list's shift and noise under which the curve is computed."""
 
-    phi: tuple[float, float]
+    phi: tuple[float, float, float]
     sigma: float
     ln_prior: float
 
@@ -73,8 +73,8 @@ def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Cur
     if len(use) > MOST_LINES_VOTING:
         weight = axis.ln_intensity if axis.ln_intensity is not None else -np.abs(axis.x - axis.x.mean())
         use = np.sort(np.argsort(-(weight - 50.0 * explained), kind="stable")[:MOST_LINES_VOTING])
-    x = axis.x[use] - cell.phi[0]
-    x = x - cell.phi[1] * axis.displacement_basis(x)
+    phi = np.array(cell.phi)
+    x = axis.x[use] - axis.shift(np.clip(axis.x[use], 0.2, 179.8) if axis.is_angle else axis.x[use], phi)
     if axis.is_angle:
         x = np.clip(x, 0.2, 179.8)
     ln_d = axis.ln_d(x)

@@ -42,6 +42,7 @@ SET_SHARES_AT: Final = (0, 1, 3, 5)
 FIND_NEIGHBOURS_AT: Final = (0, 2, 4)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
+N_SHIFT: Final = 3  # shift terms: zero, displacement, doublet
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,7 +73,7 @@ class Pool:
 
 @dataclass(frozen=True, slots=True)
 class Evaluated:
-    """Fitted sets. `phi` (n_sets, 2) shifts, `ln_a` (n_sets, m), `covariance` (n_sets, 2+m, 2+m)."""
+    """Fitted sets. `phi` (n_sets, 3) shifts, `ln_a` (n_sets, m), `covariance` (n_sets, 3+m, 3+m)."""
 
     log_evidence: FloatArray
     log_likelihood: FloatArray
@@ -166,7 +167,8 @@ class _Fit:
         axis = self.axis
         true = np.nan_to_num(axis.positions(self.half, self.u[..., None]), nan=FAR)
         clipped = np.minimum(true, 179.9) if axis.is_angle else true
-        shift = self.phi[:, 0, None, None] + self.phi[:, 1, None, None] * axis.displacement_basis(clipped)
+        parts = zip(self.phi.T, axis.bases(clipped), strict=True)
+        shift = sum(value[:, None, None] * basis for value, basis in parts)
         self.x_line = np.where(true < FAR, true + shift, FAR)
         below = (self.x_line[:, :, None, :] < axis.x[None, None, :, None]).sum(axis=3)
         offsets = np.arange(-2, 2)
@@ -192,9 +194,10 @@ class _Fit:
         axis = self.axis
         true = np.nan_to_num(axis.positions(self.near_half, self.u[:, :, None, None]), nan=FAR)
         self.near_true = np.minimum(true, 179.9) if axis.is_angle else true
-        zero, displacement = self.phi[:, 0, None, None, None], self.phi[:, 1, None, None, None]
-        self.near_basis = axis.displacement_basis(self.near_true)
-        self.near_x = np.where(true < FAR, true + zero + displacement * self.near_basis, FAR)
+        self.near_bases = axis.bases(self.near_true)
+        parts = zip(self.phi.T, self.near_bases, strict=True)
+        shift = sum(value[:, None, None, None] * basis for value, basis in parts)
+        self.near_x = np.where(true < FAR, true + shift, FAR)
 
     def chance_seen(self, ln_share: FloatArray, height: FloatArray, frequency: FloatArray) -> FloatArray:
         """Return p, the chance that a line is seen; `ln_share` broadcasts against `height`."""
@@ -216,8 +219,8 @@ class _Fit:
         sigma2 = np.exp(2.0 * self.ln_sigma)[:, None] + axis.extra_noise[None, :] ** 2
         sigma = np.sqrt(sigma2)[:, None, :, None]
         delta = axis.x[None, None, :, None] - self.near_x
-        density, inner, chosen = self._position_density(delta, sigma)
-        self.delta = chosen
+        density, inner = self._position_density(delta, sigma)
+        self.delta = delta
         reach = np.where(
             (self.near_x < axis.low - 3.0 * sigma) | (self.near_x > axis.high + 3.0 * sigma), 0.0, 1.0
         )
@@ -240,34 +243,14 @@ class _Fit:
         self.inner = inner
         self.sigma2 = sigma2
 
-    def _position_density(
-        self, delta: FloatArray, sigma: FloatArray
-    ) -> tuple[FloatArray, FloatArray, FloatArray]:
-        def mixture(value: FloatArray) -> tuple[FloatArray, FloatArray]:
-            squared = (value / sigma) ** 2
-            core = (1.0 - TAIL_SHARE) * np.exp(-0.5 * squared)
-            tail = TAIL_SHARE / TAIL_WIDTH * np.exp(-0.5 * squared / TAIL_WIDTH**2)
-            return core, tail
-
-        core, tail = mixture(delta)
-        norm = 1.0 / (sigma * np.sqrt(2.0 * np.pi))
-        if self.axis.blend_ratio is None:
-            total = core + tail
-            inner = (core + tail / TAIL_WIDTH**2) / np.maximum(total, 1e-300)
-            return total * norm, inner, delta
-        # Each line of a doublet may be the K-alpha1 peak or, where the splitting is small, the unresolved blend.
-        slope = np.degrees(2.0 * np.tan(np.radians(self.near_true) / 2.0))
-        split = slope * np.log(self.axis.blend_ratio)
-        limit = np.maximum(BLEND_LIMIT_DEG, 3.0 * sigma)
-        share = np.where(3.0 * split < limit, 0.5, 0.0)
-        core2, tail2 = mixture(delta - split)
-        first, second = (1.0 - share) * (core + tail), share * (core2 + tail2)
-        total = first + second
-        use_second = second > first
-        inner_core = np.where(use_second, core2, core)
-        inner_tail = np.where(use_second, tail2, tail)
-        inner = (inner_core + inner_tail / TAIL_WIDTH**2) / np.maximum(inner_core + inner_tail, 1e-300)
-        return total * norm, inner, np.where(use_second, delta - split, delta)
+    def _position_density(self, delta: FloatArray, sigma: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Return the density of a deviation, and the weight that it keeps in least squares."""
+        squared = (delta / sigma) ** 2
+        core = (1.0 - TAIL_SHARE) * np.exp(-0.5 * squared)
+        tail = TAIL_SHARE / TAIL_WIDTH * np.exp(-0.5 * squared / TAIL_WIDTH**2)
+        total = core + tail
+        inner = (core + tail / TAIL_WIDTH**2) / np.maximum(total, 1e-300)
+        return total / (sigma * np.sqrt(2.0 * np.pi)), inner
 
     def _height_ratio(self, height: FloatArray, plain: BoolArray) -> FloatArray:
         """Return the density of the observed height under the claim over that under the background."""
@@ -319,32 +302,26 @@ class _Fit:
         axis = self.axis
         weight = self.claims * self.inner / self.sigma2[:, None, :, None]
         weight = weight * np.where(self.near_plain, 1.0, 0.1)
-        basis = self.near_basis
         slope = axis.slope(self.near_true)
-        size = 2 + self.m
+        size = N_SHIFT + self.m
         matrix = np.zeros((self.n_sets, size, size))
         right = np.zeros((self.n_sets, size))
+        pull = weight * self.delta
 
         def total(value: FloatArray) -> FloatArray:
             return value.sum(axis=(2, 3))
 
-        w0, wb, wu = total(weight), total(weight * basis), total(weight * slope)
-        wbb, wbu, wuu = (
-            total(weight * basis**2),
-            total(weight * basis * slope),
-            total(weight * slope**2),
-        )
-        matrix[:, 0, 0] = w0.sum(axis=1)
-        matrix[:, 0, 1] = matrix[:, 1, 0] = wb.sum(axis=1)
-        matrix[:, 1, 1] = wbb.sum(axis=1)
-        right[:, 0] = total(weight * self.delta).sum(axis=1)
-        right[:, 1] = total(weight * basis * self.delta).sum(axis=1)
+        for i, first in enumerate(self.near_bases):
+            weighted = weight * first
+            right[:, i] = total(pull * first).sum(axis=1)
+            for j in range(i, N_SHIFT):
+                matrix[:, i, j] = matrix[:, j, i] = total(weighted * self.near_bases[j]).sum(axis=1)
+            matrix[:, i, N_SHIFT:] = total(weighted * slope)
+            matrix[:, N_SHIFT:, i] = matrix[:, i, N_SHIFT:]
+        right[:, N_SHIFT:] = total(pull * slope)
+        own = total(weight * slope**2)
         for member in range(self.m):
-            at = 2 + member
-            matrix[:, 0, at] = matrix[:, at, 0] = wu[:, member]
-            matrix[:, 1, at] = matrix[:, at, 1] = wbu[:, member]
-            matrix[:, at, at] = wuu[:, member]
-            right[:, at] = total(weight * slope * self.delta)[:, member]
+            matrix[:, N_SHIFT + member, N_SHIFT + member] = own[:, member]
         of_lines = matrix.copy()
         offset = self.phi - axis.shift_mean
         precision = (SHIFT_TAIL + 1.0) / (SHIFT_TAIL * axis.shift_scale**2 + offset**2)
@@ -358,11 +335,11 @@ class _Fit:
         flat = ~self.unlisted & (drift == 0) & (self.high > self.low)
         width = np.maximum(self.high - self.low, 1e-9)
         drift_precision = np.where(flat, np.minimum(drift_precision, 4.0 / width**2), drift_precision)
-        for at in range(2):
+        for at in range(N_SHIFT):
             matrix[:, at, at] += precision[:, at]
             right[:, at] -= precision[:, at] * offset[:, at]
         for member in range(self.m):
-            at = 2 + member
+            at = N_SHIFT + member
             matrix[:, at, at] += drift_precision[:, member]
             pull = np.where(self.unlisted[:, member], 0.0, drift[:, member])
             right[:, at] -= drift_precision[:, member] * pull
@@ -379,7 +356,8 @@ class _Fit:
         limit = 0.12 if self.axis.is_angle else 0.01
         self.phi[:, 0] += np.clip(change[:, 0], -limit, limit)
         self.phi[:, 1] += np.clip(change[:, 1], -0.2, 0.2)
-        self.u += np.clip(change[:, 2:], -3e-3, 3e-3)
+        self.phi[:, 2] += np.clip(change[:, 2], -0.5, 0.5)
+        self.u += np.clip(change[:, N_SHIFT:], -3e-3, 3e-3)
         gradient, curvature = self.noise_terms(matrix, of_lines)
         self.ln_sigma -= np.clip(gradient / curvature, -0.7, 0.7)
         self.rate = np.clip(self.background.sum(axis=1) + 0.3, BACKGROUND[0], None)
@@ -480,7 +458,7 @@ class _Fit:
         prior += np.where(self.unlisted, 0.0, listed).sum(axis=1)
         noise = (self.ln_sigma - np.log(axis.noise_center)) / axis.noise_spread
         prior += -0.5 * noise**2 - np.log(axis.noise_spread) - 0.5 * LN_2PI
-        laplace = 0.5 * (3 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
+        laplace = 0.5 * (N_SHIFT + 1 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
         evidence = log_likelihood + prior + laplace + share_term.sum(axis=1) + self.ln_odds
         plain = p * (self.kind == KIND_LINE)
         return Evaluated(
@@ -501,7 +479,6 @@ class _Fit:
         )
 
 
-BLEND_LIMIT_DEG: Final = 0.30  # splitting of K-alpha1 and K-alpha2 above which a peak is K-alpha1 (tuned)
 LARGEST_BATCH: Final = 3_000_000
 
 
@@ -514,7 +491,7 @@ def evaluate(
     ----------
     members : (n_sets, m) int, m >= 1
         Candidates of each set.
-    phi, ln_a, ln_sigma : (n_sets, 2), (n_sets, m), (n_sets,)
+    phi, ln_a, ln_sigma : (n_sets, 3), (n_sets, m), (n_sets,)
         Where each fit starts.
     """
     m = members.shape[1]

@@ -59,6 +59,11 @@ class Fitted:
         return np.asarray(self.batch.phi[self.row])
 
     @property
+    def shift_terms(self) -> tuple[float, float, float]:
+        zero, displacement, doublet = self.phi.tolist()
+        return zero, displacement, doublet
+
+    @property
     def ln_a(self) -> FloatArray:
         return np.asarray(self.batch.ln_a[self.row])
 
@@ -72,7 +77,7 @@ class Start:
     """Where the fit of a set begins."""
 
     members: tuple[int, ...]
-    phi: tuple[float, float]
+    phi: tuple[float, float, float]
     ln_a: tuple[float, ...]
     ln_sigma: float
 
@@ -199,24 +204,24 @@ class Search:
                 cells.append(Cell(self._split_shift(shift), float(sigma), float(prior)))
         return cells
 
-    def _split_shift(self, shift: float) -> tuple[float, float]:
-        """Return (zero, displacement) that make half of a shift at low angle each."""
+    def _split_shift(self, shift: float) -> tuple[float, float, float]:
+        """Return shift terms of which zero and displacement make half of a shift at low angle each."""
         mean = self.axis.shift_mean
         if not self.axis.is_angle:
-            return float(mean[0] + shift), 0.0
+            return float(mean[0] + shift), 0.0, 0.0
         per_mm = float(self.axis.displacement_basis(np.array([0.0]))[0])
-        return float(mean[0] + 0.5 * shift), float(mean[1] + 0.5 * shift / per_mm)
+        return float(mean[0] + 0.5 * shift), float(mean[1] + 0.5 * shift / per_mm), float(mean[2])
 
     def _cells_beside(self, parent: Fitted) -> list[Cell]:
         sigma = float(np.exp(parent.ln_sigma))
-        z, s = (float(value) for value in parent.phi)
+        z, s, doublet = parent.shift_terms
         wide = float(np.sqrt(parent.batch.covariance[parent.row, 0, 0]))
         nudge = min(max(wide, sigma), 2.0 * float(self.axis.shift_scale[0]))
         return [
-            Cell((z, s), sigma, 0.0),
-            Cell((z, s), 2.5 * sigma, -0.5),
-            Cell((z + nudge, s), sigma, -0.5),
-            Cell((z - nudge, s), sigma, -0.5),
+            Cell((z, s, doublet), sigma, 0.0),
+            Cell((z, s, doublet), 2.5 * sigma, -0.5),
+            Cell((z + nudge, s, doublet), sigma, -0.5),
+            Cell((z - nudge, s, doublet), sigma, -0.5),
         ]
 
     def _propose(self, key: Key, n_listed: int) -> list[tuple[float, Start]]:
