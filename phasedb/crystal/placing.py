@@ -59,7 +59,12 @@ def _parameters_of(site: TypeSite) -> set[str]:
 
 
 def build(
-    kind: StructureType, choice: Assignment, placed: tuple[Placed, ...], named: dict[str, float]
+    kind: StructureType,
+    choice: Assignment,
+    placed: tuple[Placed, ...],
+    named: dict[str, float],
+    *,
+    b_iso: float = 0.5,
 ) -> Structure:
     """Return the structure of a type with its sites filled.
 
@@ -82,16 +87,16 @@ def build(
             (symbol, min(part * held, 1.0)) for symbol, held in choice.shares[slot.site.role].items()
         )
         sites.append((species, position))
-    return Structure(kind.space_group, _labelled(sites), _assumed(kind, slots, choice, named))
+    return Structure(kind.space_group, _labelled(sites, b_iso), _assumed(kind, slots, choice, named))
 
 
-def _labelled(rows: list[tuple[tuple[tuple[str, float], ...], Position]]) -> tuple[Site, ...]:
+def _labelled(rows: list[tuple[tuple[tuple[str, float], ...], Position]], b_iso: float) -> tuple[Site, ...]:
     seen: dict[str, int] = {}
     sites = []
     for species, position in rows:
         name = "/".join(symbol for symbol, _ in species)
         seen[name] = seen.get(name, 0) + 1
-        sites.append(Site(f"{name}{seen[name]}", species, position))
+        sites.append(Site(f"{name}{seen[name]}", species, position, b_iso))
     return tuple(sites)
 
 

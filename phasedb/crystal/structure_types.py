@@ -8,6 +8,7 @@ from typing import Final
 
 from phasedb.crystal.assignment import Assignment, assignments, role_sizes
 from phasedb.crystal.coordinates import parse_parameters
+from phasedb.crystal.displacement import typical_b_iso
 from phasedb.crystal.formula import Formula, parse_formula
 from phasedb.crystal.metal_types import METALS_AND_SIMPLE
 from phasedb.crystal.phases import Structure
@@ -152,7 +153,7 @@ def structure_from_type(symbol: str, formula: str, *, free_parameters: str | Non
     for kind, choices in _choices(resolved, parsed, named):
         for choice in choices:
             try:
-                structure = build(kind, choice, placed, named)
+                structure = build(kind, choice, placed, named, b_iso=typical_b_iso(parsed))
                 check_structure(structure)
             except InputError as error:
                 failure = failure or error
