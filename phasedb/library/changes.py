@@ -97,7 +97,7 @@ def add(
         if warnings and not accept_warnings:
             raise WarningsRefusedError(prepared.content.name, warnings)
         entry = entry_of(prepared, uid=new_uid(), by=writing.person.who, at=writing.at)
-        _insert(writing, [entry], action="entered", remarks=[door.accepted_text(warnings)])
+        write_new(writing, [entry], action="entered", remarks=[door.accepted_text(warnings)])
     return Outcome(entry, warnings)
 
 
@@ -149,14 +149,15 @@ def add_many(
                 "; ".join(part for part in (remark, next(own, "") if own is not None else "") if part)
                 for _ in entries
             ]
-            _insert(writing, entries, action=action, remarks=said)
+            write_new(writing, entries, action=action, remarks=said)
             done += len(entries)
             if progress is not None:
                 progress(done)
     return done
 
 
-def _insert(writing: Writing, entries: Sequence[Entry], *, action: str, remarks: Sequence[str]) -> None:
+def write_new(writing: Writing, entries: Sequence[Entry], *, action: str, remarks: Sequence[str]) -> None:
+    """Insert whole entries, each with its history row, checksum and cached lines."""
     documents = [document_of(entry) for entry in entries]
     checksums = [content_checksum(document) for document in documents]
     ids = mapping.insert_entries(writing.connection, entries, checksums)
@@ -268,7 +269,7 @@ def revise(
             )
             if part
         )
-        _update(writing, phase_id, old, entry, action="revised", remark=said)
+        write_changed(writing, phase_id, old, entry, action="revised", remark=said)
     return Outcome(entry, warnings)
 
 
@@ -303,7 +304,9 @@ def check(library: Library, name: str, *, expect_version: int | None = None, rem
             checked_by=writing.person.who,
             checked_at=writing.at,
         )
-        _update(writing, phase_id, old, entry, action="checked", remark=clean_text(remark, what="remark"))
+        write_changed(
+            writing, phase_id, old, entry, action="checked", remark=clean_text(remark, what="remark")
+        )
     return entry
 
 
@@ -348,7 +351,7 @@ def withdraw(
             withdrawn_reason=said,
             replaced_by=successor,
         )
-        _update(writing, phase_id, old, entry, action="withdrawn", remark=said)
+        write_changed(writing, phase_id, old, entry, action="withdrawn", remark=said)
     return entry
 
 
@@ -369,7 +372,7 @@ def restore_entry(library: Library, name: str, *, reason: str, expect_version: i
         entry = replace(
             old, standing="draft", version=old.version + 1, withdrawn_reason=None, replaced_by=None
         )
-        _update(writing, phase_id, old, entry, action="restored", remark=said)
+        write_changed(writing, phase_id, old, entry, action="restored", remark=said)
     return entry
 
 
@@ -391,7 +394,10 @@ def _open_entry(
     return phase_id, entry
 
 
-def _update(writing: Writing, phase_id: int, old: Entry, entry: Entry, *, action: str, remark: str) -> None:
+def write_changed(
+    writing: Writing, phase_id: int, old: Entry, entry: Entry, *, action: str, remark: str
+) -> None:
+    """Write an entry over its old state, with its history row, checksum and cached lines."""
     before, after = document_of(old), document_of(entry)
     checksum = content_checksum(after)
     mapping.update_entry(writing.connection, phase_id, entry, checksum)
