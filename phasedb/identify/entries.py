@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from phasedb.crystal.lattice import LATTICE_TYPES
 from phasedb.crystal.phases import DRIFT_CLASSES, PhaseTable
-from phasedb.identify.archetypes import archetypes
+from phasedb.identify.archetypes import generic
 from phasedb.identify.chemistry import chemistry_weights
 from phasedb.identify.settings import MatchSettings
 
@@ -45,15 +45,14 @@ class Entries:
         return len(self.rows)
 
     def pattern(self, index: int) -> tuple[NDArray[np.integer], FloatArray]:
-        """Return (N, strength) of one entry: from its structure, else the commonest of its lattice type."""
+        """Return (N, strength) of one entry: from its structure, else the generic one of its lattice type."""
         row = int(self.rows[index])
         first, last = self.table.line_start[row], self.table.line_start[row + 1]
         if last > first:
             return self.table.line_n[first:last], self.table.line_strength[first:last]
         lattice = LATTICE_TYPES[int(self.lattice[index])]
-        choices = archetypes(lattice, float(np.exp(self.ln_a[index])))
-        _, n, strength = choices[-1]
-        return n, strength
+        pattern = generic(lattice)
+        return pattern.n, pattern.strength
 
     def has_structure(self, index: int) -> bool:
         """Return whether the entry's line heights come from its structure."""
@@ -86,8 +85,12 @@ def prepare(
     high = np.where(np.isnan(table.a_high_angstrom), ln_a, np.log(table.a_high_angstrom) + ln_shift)
     ranged = high > low
     scale = np.where(ranged, np.minimum(scale, 1e-3), scale)
-    total = float(weight.sum()) * (1.0 if phase_count is None else phase_count / max(len(table), 1))
-    odds = np.minimum(EXPECTED_LISTED * weight / max(total, 1e-12), MOST_LIKELY_PRIOR)
+    # what is compatible with the chemistry shares the expectation; the rest keeps its share of the whole library
+    crowd = 1.0 if phase_count is None else phase_count / max(len(table), 1)
+    compatible = max(float((weight >= 1.0).sum()) * crowd, 1e-9)
+    whole = max(len(table) * crowd, 1.0)
+    odds = np.where(weight >= 1.0, EXPECTED_LISTED / compatible, EXPECTED_LISTED * weight / whole)
+    odds = np.minimum(odds, MOST_LIKELY_PRIOR)
     with np.errstate(divide="ignore"):
         ln_odds = np.log(odds)
     return Entries(

@@ -34,6 +34,8 @@ HEIGHT_SPREAD: Final = (0.45, 1.2)  # ln: powder, textured (tuned)
 HEIGHT_MIX: Final = (0.72, 0.23, 0.05)  # powder, textured, anything: texture cannot veto a phase (tuned)
 SHIFT_TAIL: Final = 3.0  # degrees of freedom of the Student-t priors
 DRIFT_TAIL: Final = 3.0
+LARGEST_DRIFT: Final = 0.009  # ln a: samples of one phase differ by up to about 1 % (METHODS section 6)
+LARGEST_DRIFT_EDGE: Final = 0.0015
 SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
 DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
@@ -57,6 +59,8 @@ class Pool:
     ln_a_low, ln_a_high : (n_candidates,) stated range, equal to ln_a where there is none
     ln_odds : (n_candidates,) prior odds of being present; for unlisted, per unit of ln a
     unlisted : (n_candidates,) bool
+    height_scale : (n_candidates,)
+        How much wider heights scatter than those of a known structure: 1, more for an assumed line pattern.
     """
 
     lines: LineTable
@@ -66,6 +70,7 @@ class Pool:
     ln_a_high: FloatArray
     ln_odds: FloatArray
     unlisted: BoolArray
+    height_scale: FloatArray
 
     def __len__(self) -> int:
         return len(self.ln_a)
@@ -149,6 +154,7 @@ class _Fit:
         self.low = pool.ln_a_low[members]
         self.high = pool.ln_a_high[members]
         self.unlisted = pool.unlisted[members]
+        self.height_scale = pool.height_scale[members]
         self.ln_odds = pool.ln_odds[members].sum(axis=1)
         self.phi = phi.copy()
         self.u = ln_a.copy()
@@ -201,8 +207,11 @@ class _Fit:
 
     def chance_seen(self, ln_share: FloatArray, height: FloatArray, frequency: FloatArray) -> FloatArray:
         """Return p, the chance that a line is seen; `ln_share` broadcasts against `height`."""
+        slope = DETECTION_SLOPE / self.height_scale.reshape(
+            self.height_scale.shape + (1,) * (height.ndim - 2)
+        )
         ratio = np.clip(ln_share + height - self.floor, -40.0, 40.0)
-        return MOST_CERTAIN * frequency / (1.0 + np.exp(-DETECTION_SLOPE * ratio))
+        return np.asarray(MOST_CERTAIN * frequency / (1.0 + np.exp(-slope * ratio)))
 
     def in_range(self) -> BoolArray:
         """Return which predicted lines the measurement could have shown."""
@@ -258,8 +267,8 @@ class _Fit:
             return np.ones_like(height)
         observed = self.axis.ln_intensity[None, None, :, None]
         residual = observed - self.ln_share[:, :, None, None] - height
-        residual = np.where(plain, residual, residual / 2.0)
-        return np.exp(log_height_density(residual)) * max(0.3 - self.floor, 1.0)
+        scale = np.where(plain, self.height_scale[:, :, None, None], 2.0)
+        return np.asarray(np.exp(log_height_density(residual / scale)) / scale * max(0.3 - self.floor, 1.0))
 
     def _one_to_one(self, claim: FloatArray, others: FloatArray) -> FloatArray:
         """Let each predicted line explain one observed line only: the one that needs it most."""
@@ -422,7 +431,7 @@ class _Fit:
             residual = axis.ln_intensity[None, None, None, :, None] - steps[:, :, :, None, None]
             residual = residual - self.near_height[:, :, None]
             residual = np.where(np.isfinite(residual), residual, 0.0)
-            gain = gain + log_height_density(residual)
+            gain = gain + log_height_density(residual / self.height_scale[:, :, None, None, None])
         value = value + (plain[:, :, None] * gain).sum(axis=(3, 4))
         best = value.argmax(axis=2)
         self.ln_share = np.take_along_axis(steps, best[..., None], axis=2)[..., 0]
@@ -451,6 +460,8 @@ class _Fit:
         prior = log_student(self.phi - axis.shift_mean, axis.shift_scale, SHIFT_TAIL).sum(axis=1)
         drift = self.drift()
         listed = log_student(drift, np.maximum(self.scale, 1e-12), DRIFT_TAIL)
+        beyond = np.maximum(np.abs(drift) - np.maximum(LARGEST_DRIFT, 3.0 * self.scale), 0.0)
+        listed -= 0.5 * (beyond / LARGEST_DRIFT_EDGE) ** 2
         # a stated range spreads the prior over itself: density 1/(range + the width of its tails)
         width = self.high - self.low
         tails = np.sqrt(3.0) * np.pi / 2.0 * np.maximum(self.scale, 1e-12)

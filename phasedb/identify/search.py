@@ -11,15 +11,18 @@ from numpy.typing import NDArray
 
 from phasedb.crystal.lattice import LATTICE_TYPES
 from phasedb.identify.archetypes import archetypes
-from phasedb.identify.axis import Axis
+from phasedb.identify.axis import KIND_LINE, Axis
 from phasedb.identify.curve import A_LARGEST, A_SMALLEST, Cell, Curve, peaks_of, vote
 from phasedb.identify.entries import Entries
 from phasedb.identify.likelihood import (
+    DETECTION_SLOPE,
+    FAR,
     SHIFT_TAIL,
     Evaluated,
     Pool,
     empty_log_likelihood,
     evaluate,
+    ln_floor,
     log_student,
 )
 from phasedb.identify.lines import LineTable, make_lines, stack
@@ -35,8 +38,10 @@ LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
 N_SINGLE: Final = 70  # proposals evaluated as first phase
 N_NEXT: Final = 36  # proposals evaluated as a further phase
 N_UNLISTED: Final = 5  # places of each lattice type evaluated as unlisted
+N_PATTERNS: Final = 4  # line patterns tried for each of them
 N_PARENTS: Final = 6
 N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
+PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
 HOPELESS: Final = 12.0  # sets this far (nats) below the best are not grown
 STARTS: Final = 2
@@ -91,7 +96,7 @@ class Candidates:
         self.entries = entries
         self._tables: list[LineTable] = []
         self._stacked: Pool | None = None
-        self._columns: list[tuple[float, float, float, float, float, bool]] = []
+        self._columns: list[tuple[float, float, float, float, float, float, bool]] = []
         self.entry_of: list[int] = []  # -1 for unlisted
         self.lattice_of: list[int] = []
         self.pattern_of: list[int] = []  # which line pattern an unlisted phase is given
@@ -115,6 +120,7 @@ class Candidates:
                         float(e.ln_a_low[index]),
                         float(e.ln_a_high[index]),
                         float(e.ln_odds[index]),
+                        1.0 if e.has_structure(index) else PATTERN_SCATTER,
                         False,
                     )
                 )
@@ -124,25 +130,53 @@ class Candidates:
             self._stacked = None
         return [self._of_entry[index] for index in wanted]
 
-    def add_unlisted(self, lattice: int, ln_a: float) -> list[int]:
-        """Return pool numbers of an unlisted phase at a place, one for each line pattern it may have."""
+    def add_unlisted(self, lattice: int, ln_a: float, cell: Cell) -> list[int]:
+        """Return pool numbers of an unlisted phase at a place, one for each of the likeliest line patterns."""
         place = (lattice, round(ln_a / SAME_PLACE))
         if place not in self._of_place:
             name = LATTICE_TYPES[lattice]
             patterns = archetypes(name, float(np.exp(ln_a)))
-            places = np.full(len(patterns), ln_a)
-            self._tables.append(make_lines(self.axis, places, [(n, s) for _, n, s in patterns]))
+            table = make_lines(
+                self.axis, np.full(len(patterns), ln_a), [(one.n, one.strength) for _, one in patterns]
+            )
+            rows = self._likeliest_patterns(table, ln_a, cell, [weight for weight, _ in patterns])
+            self._tables.append(table.take(rows))
             density = np.log(self.expected_unlisted * UNLISTED_LATTICE[name] / LN_A_SPAN)
             numbers = []
-            for pattern, (ln_weight, _, _) in enumerate(patterns):
+            for row in rows.tolist():
                 numbers.append(len(self._columns))
-                self._columns.append((ln_a, 0.0, ln_a, ln_a, density + ln_weight, True))
+                self._columns.append(
+                    (ln_a, 0.0, ln_a, ln_a, density + patterns[row][0], PATTERN_SCATTER, True)
+                )
                 self.entry_of.append(-1)
                 self.lattice_of.append(lattice)
-                self.pattern_of.append(pattern)
+                self.pattern_of.append(row)
             self._of_place[place] = numbers
             self._stacked = None
         return self._of_place[place]
+
+    def _likeliest_patterns(
+        self, table: LineTable, ln_a: float, cell: Cell, ln_weights: list[float]
+    ) -> IntArray:
+        """Return the rows of the patterns whose seen and unseen lines suit the list best; generic ones are last."""
+        axis = self.axis
+        if len(ln_weights) <= N_PATTERNS:
+            return np.arange(len(ln_weights))
+        true = np.nan_to_num(axis.positions(table.half_ln_n, np.array(ln_a)), nan=FAR)
+        safe = np.minimum(true, 179.9) if axis.is_angle else true
+        x = true + axis.shift(safe, np.array(cell.phi))
+        plain = (table.kind == KIND_LINE) & (x >= axis.low) & (x <= axis.high)
+        sigma = np.hypot(cell.sigma, float(np.median(axis.extra_noise)))
+        gap = np.abs(x[:, :, None] - axis.x).min(axis=2)
+        seen = gap < 2.5 * sigma + 1e-3 * np.abs(axis.slope(safe))
+        best = np.full(len(ln_weights), -np.inf)
+        for ln_share in (0.0, -1.5, -3.0):
+            ratio = DETECTION_SLOPE * (table.ln_height + ln_share - ln_floor(axis))
+            p = 0.97 / (1.0 + np.exp(np.clip(-ratio, -40.0, 40.0)))
+            value = np.where(seen, np.log(np.maximum(p, 0.02)), np.log1p(-p))
+            best = np.maximum(best, np.where(plain, value, 0.0).sum(axis=1))
+        order = np.argsort(-(best + np.array(ln_weights)), kind="stable")
+        return np.sort(order[:N_PATTERNS])
 
     @property
     def pool(self) -> Pool:
@@ -150,9 +184,10 @@ class Candidates:
         if self._stacked is None:
             lines = stack(self._tables)
             self._tables = [lines]
-            columns = np.array([column[:5] for column in self._columns])
-            unlisted = np.array([column[5] for column in self._columns], dtype=bool)
-            self._stacked = Pool(lines, *columns.T, unlisted)  # type: ignore[call-arg]
+            columns = np.array([column[:6] for column in self._columns])
+            ln_a, scale, low, high, odds, height = columns.T
+            unlisted = np.array([column[6] for column in self._columns], dtype=bool)
+            self._stacked = Pool(lines, ln_a, scale, low, high, odds, unlisted, height)
         return self._stacked
 
 
@@ -276,7 +311,7 @@ class Search:
                     ]
                     if near:
                         continue
-                    for number in self.candidates.add_unlisted(lattice, ln_a):
+                    for number in self.candidates.add_unlisted(lattice, ln_a, cell):
                         start = Start(
                             (*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma))
                         )

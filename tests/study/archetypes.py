@@ -1,7 +1,8 @@
 """Make the line patterns of unlisted phases from the starter library: ``python -m study.archetypes`` (from tests/).
 
 Writes phasedb/identify/archetypes.json. For each structure type: the entry whose pattern is nearest to the mean of
-its type, and, where another differs much, the one farthest from it; weight by how many entries the type has.
+its type, and, where another differs much, the one farthest from it; weight by how many entries the type has. Types of
+a single entry are left out: their pattern would be that entry's own, and the study takes entries out of the library.
 """
 
 from __future__ import annotations
@@ -44,6 +45,8 @@ def make(table: PhaseTable) -> list[dict]:
             groups.setdefault(key, []).append(row)
     made = []
     for (lattice, kind), rows in sorted(groups.items()):
+        if len(rows) < 2:
+            continue
         rows.sort(key=lambda row: table.name[row])
         dense = [pattern(table, row) for row in rows]
         profiles = np.array([_profile(one) for one in dense])
