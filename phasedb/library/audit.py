@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any, Final
 
 import sqlalchemy as sa
 
-from phasedb.errors import InputError
+from phasedb.errors import InputError, StoreError
 from phasedb.library import connect, mapping, reading, tables
 from phasedb.library.chain import GENESIS, HistoryRow, is_whole
 from phasedb.library.changes import document_of
@@ -91,7 +91,7 @@ def audit(library: Library, *, expect: str | None = None) -> Audit:
         for step in steps:
             try:
                 step()
-            except (sa.exc.DBAPIError, sqlite3.Error) as error:
+            except (sa.exc.DBAPIError, sqlite3.Error, StoreError) as error:
                 found.faults.append(
                     f"the store cannot be read through: {getattr(error, 'orig', None) or error}"
                 )
@@ -221,13 +221,22 @@ def _check_entries(connection: Connection, found: Audit, replayed: _Replayed) ->
         found.faults += _derived_faults(entry, stored[phase_id].name_key)
     for uid, text in expected.items():
         if uid not in seen:
-            found.faults.append(f"entry {json.loads(text).get('name')!r} of the history is not in the store")
+            found.faults.append(f"entry {_parsed(text).get('name')!r} of the history is not in the store")
     return live
+
+
+def _parsed(text: str) -> dict[str, Any]:
+    """Return a document of the history; {} where it was damaged, which the hash of its row has shown."""
+    try:
+        document = json.loads(text)
+    except ValueError:
+        return {}
+    return document if isinstance(document, dict) else {}
 
 
 def _stored_fields(text: str) -> dict[str, Any]:
     """Return a document with its bookkeeping under names that are compared too."""
-    document = json.loads(text)
+    document = _parsed(text)
     return {
         f"stored {name}" if name in ("version", "uid") or name.endswith(("_by", "_at")) else name: value
         for name, value in document.items()
@@ -289,7 +298,7 @@ def _check_records(connection: Connection, found: Audit, replayed: _Replayed) ->
             if text is None:
                 found.faults.append(f"{table.name} {row['uid']} is not in the history")
             elif canonical_json(document) != text:
-                lines = "; ".join(changed_lines(json.loads(text), document)[:3])
+                lines = "; ".join(changed_lines(_parsed(text), document)[:3])
                 found.faults.append(f"{table.name} {row['uid']} is not what the history says: {lines}")
         found.faults += [f"{table.name} {uid} of the history is not in the store" for uid in expected]
 

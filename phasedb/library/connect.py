@@ -167,6 +167,14 @@ def hidden_password(place: str) -> str:
         return "the database URL"
 
 
+def damaged_row(error: Exception) -> StoreError:
+    """Return the error for a row whose values no library would have written."""
+    return StoreError(
+        f"the store is damaged: a row cannot be read ({type(error).__name__}: {error})",
+        hint="run 'phasedb audit', then 'phasedb restore BACKUP --replace'",
+    )
+
+
 _MEANINGS: Final = (
     # part of the driver's message, what it means, what to do
     ("locked", "another command is writing to the store", "wait and try again; nothing was changed"),
@@ -175,6 +183,7 @@ _MEANINGS: Final = (
     ("full", "no space is left for the store", "free some space and try again; nothing was changed"),
     ("malformed", "the store is damaged", "run 'phasedb audit', then 'phasedb restore BACKUP --replace'"),
     ("not a database", "the store is damaged or is not a phasedb library", "restore a backup"),
+    ("could not decode", "the store is damaged", "run 'phasedb audit', then restore a backup"),
     ("unable to open", "the store or its folder cannot be opened", "check that it exists and may be written"),
     (
         "disk i/o",

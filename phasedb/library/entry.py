@@ -31,7 +31,7 @@ class Source:
         What this source gives, where that is kept.
     """
 
-    citation: str
+    citation: str = ""
     doi: str = ""
     year: int | None = None
     kind: SourceKind = "paper"

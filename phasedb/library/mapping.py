@@ -12,6 +12,7 @@ import sqlalchemy as sa
 
 from phasedb.crystal.phases import Site
 from phasedb.library import tables
+from phasedb.library.connect import damaged_row
 from phasedb.library.entry import Draft, Entry, Source, canonical_json, key_of
 
 if TYPE_CHECKING:
@@ -123,8 +124,11 @@ def load_entries(connection: Connection, condition: sa.ColumnElement[bool] | Non
         query = query.where(condition)
     rows = sorted(connection.execute(query).mappings(), key=lambda row: str(row["name_key"]))
     ids = [int(row["id"]) for row in rows] if condition is not None else None
-    children = _Children(connection, ids)
-    return {int(row["id"]): entry_from_row(row, children) for row in rows}
+    try:
+        children = _Children(connection, ids)
+        return {int(row["id"]): entry_from_row(row, children) for row in rows}
+    except (ValueError, TypeError, AttributeError) as error:
+        raise damaged_row(error) from error
 
 
 class _Children:

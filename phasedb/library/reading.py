@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType
 from phasedb.crystal.phases import DRIFT_CLASSES, Phase, PhaseTable
-from phasedb.library import mapping, tables
+from phasedb.library import connect, mapping, tables
 
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection
@@ -102,6 +102,13 @@ def _numbers(rows: Sequence[Any], name: str) -> NDArray[np.float64]:
 
 
 def _table(connection: Connection, rows: Sequence[Any]) -> PhaseTable:
+    try:
+        return _columns_of(connection, rows)
+    except (ValueError, TypeError, KeyError, AttributeError) as error:
+        raise connect.damaged_row(error) from error
+
+
+def _columns_of(connection: Connection, rows: Sequence[Any]) -> PhaseTable:
     lines = [_cached(row) for row in rows]
     missing = [row.id for row, known in zip(rows, lines, strict=True) if known is None and row.has_sites]
     if missing:
