@@ -15,7 +15,7 @@ def time_text(seconds: float) -> str:
     """Return a time as people read it.
 
     >>> time_text(8.4), time_text(75), time_text(3700)
-    ('8 s', '1 min 15 s', '1 h 2 min')
+    ('8 s', '1 min 15 s', '1 h 1 min')
     """
     whole = round(seconds)
     if whole < 60:

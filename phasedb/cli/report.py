@@ -111,7 +111,7 @@ def _page(
     issued: str | None,
     record: str,
 ) -> str:
-    from phasedb.report.page import PageFacts, TestDetails, report_page
+    from phasedb.report.page import PageFacts, ReportDetails, report_page
 
     given = {("instrument" if name == "equipment" else name): text for name, text in details.items()}
     given["instrument"] = given["instrument"] or instrument or ""
@@ -124,7 +124,7 @@ def _page(
         history_head=library.history_head,
         record=record,
     )
-    return report_page(found, TestDetails(**given), facts)
+    return report_page(found, ReportDetails(**given), facts)
 
 
 def _entries(table: PhaseTable) -> list[Entry]:

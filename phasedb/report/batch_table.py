@@ -12,6 +12,7 @@ from phasedb.errors import PhasedbError
 from phasedb.identify.result import Match
 from phasedb.report import wording
 from phasedb.report.document import match_document, rounded
+from phasedb.report.table import printable
 from phasedb.report.verdict import WORTH_NAMING
 
 ROW_SCHEMA: Final = "phasedb.batch-row/1"
@@ -111,7 +112,7 @@ def csv_lines(records: Iterable[dict[str, Any]]) -> Iterator[str]:
     for record in records:
         values = {**record, "error": error_text(record)}
         cells = [values.get(column) for column in COLUMNS]
-        writer.writerow([harmless(cell) if isinstance(cell, str) else cell for cell in cells])
+        writer.writerow([harmless(printable(cell)) if isinstance(cell, str) else cell for cell in cells])
         yield taken()
 
 

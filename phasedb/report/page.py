@@ -25,7 +25,7 @@ _MOST_ENTRY_MARKS: Final = 4000  # more marks than this are a grey bar, and a la
 
 
 @dataclass(frozen=True, slots=True)
-class TestDetails:
+class ReportDetails:
     """What a test report needs and only people know; an empty text is named as not given."""
 
     laboratory: str = ""
@@ -76,7 +76,7 @@ class PageFacts:
     record: str = ""
 
 
-def report_page(match: Match, details: TestDetails, facts: PageFacts) -> str:
+def report_page(match: Match, details: ReportDetails, facts: PageFacts) -> str:
     """Return the report as one HTML page without any outside reference."""
     from jinja2 import Environment, FileSystemLoader, StrictUndefined
 
@@ -107,14 +107,14 @@ def _policy(css: str, script: str) -> str:
     )
 
 
-def _number(match: Match, details: TestDetails) -> str:
+def _number(match: Match, details: ReportDetails) -> str:
     """The report's number: the same result and details give the same, any change another."""
     given = "\x00".join(str(getattr(details, column.name)) for column in fields(details))
     digest = hashlib.sha256(document_bytes(match_document(match)) + given.encode("utf-8")).hexdigest()
     return f"{digest[:4]}-{digest[4:8]}-{digest[8:12]}"
 
 
-def _words(match: Match, details: TestDetails, facts: PageFacts) -> dict[str, Any]:
+def _words(match: Match, details: ReportDetails, facts: PageFacts) -> dict[str, Any]:
     measurement = match.measurement
     marks = figures.phase_marks(match)
     given = [(TITLES[c.name], printable(getattr(details, c.name))) for c in fields(details)]

@@ -6,7 +6,6 @@ import os
 import re
 import shutil
 import sys
-import textwrap
 import unicodedata
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
@@ -55,7 +54,7 @@ def printable(text: str) -> str:
 
 
 def display_width(text: str) -> int:
-    """Return the columns that `text` takes: two for East Asian wide characters, none for combining marks.
+    """Return the columns of `text`: two for East Asian wide characters, none for combining marks.
 
     >>> display_width("4.2417(2) Å"), display_width("相")
     (11, 2)
@@ -79,10 +78,26 @@ def wrap(text: str, width: int) -> list[str]:
     """
     if display_width(text) <= width:
         return [text]
-    narrow = width if text.isascii() else max(2, width * len(text) // display_width(text))
-    glued = _BEFORE_UNIT.sub("\0", text)
-    lines = textwrap.wrap(glued, max(2, narrow), break_on_hyphens=False) or [""]
-    return [line.replace("\0", " ") for line in lines]
+    lines, line = [], ""
+    for word in _BEFORE_UNIT.sub("\0", text).split(" "):
+        if line and display_width(line) + 1 + display_width(word) <= width:
+            line += " " + word
+            continue
+        if line:
+            lines.append(line)
+        *full, line = _divided(word, max(2, width))
+        lines.extend(full)
+    return [row.replace("\0", " ") for row in (*lines, line)]
+
+
+def _divided(word: str, width: int) -> list[str]:
+    """A word in pieces of at most `width` columns."""
+    pieces = [""]
+    for character in word:
+        if display_width(pieces[-1] + character) > width:
+            pieces.append("")
+        pieces[-1] += character
+    return pieces
 
 
 def paragraph(text: str, width: int, *, first: str = "", rest: str | None = None) -> str:
