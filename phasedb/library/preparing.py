@@ -112,10 +112,8 @@ def canonical_type(text: str | None) -> str | None:
     if text is None or not text.strip():
         return None
     label = clean_name(text, what="structure type")
-    try:
-        from phasedb.crystal.structure_types import resolve_structure_type
-    except ImportError:
-        return label
+    from phasedb.crystal.structure_types import resolve_structure_type
+
     return resolve_structure_type(label) or label
 
 
@@ -123,16 +121,16 @@ def _with_sites(content: Draft) -> tuple[Draft, str]:
     """Return the content with the sites of its structure type, and what is wrong with the type (or "")."""
     if content.structure_type is None:
         return content, ""
-    try:
-        from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
-    except ImportError:
-        return content, ""
+    from phasedb.crystal.structure import check_structure
+    from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
+
     if resolve_structure_type(content.structure_type) is None:
         return content, ""
     try:
         structure = structure_from_type(
             content.structure_type, content.formula, free_parameters=content.free_parameters or None
         )
+        check_structure(structure, content.lattice_type)
     except InputError as error:
         return replace(content, sites=(), assumed=()), str(error)
     return (
