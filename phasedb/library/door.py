@@ -12,7 +12,7 @@ import sqlalchemy as sa
 from phasedb.crystal.quantity import KX_IN_ANGSTROM
 from phasedb.library import tables
 from phasedb.library.entry import Draft, Entry
-from phasedb.library.preparing import Prepared
+from phasedb.library.preparing import Prepared, entry_of
 
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection
@@ -139,6 +139,8 @@ def near_text(content: Draft, other: str, formula: str, a: float, difference: fl
 
 def physics_warnings(prepared: Prepared) -> list[Warned]:
     """Return what the physics of the cell has against the values; needs no store."""
+    from phasedb.crystal.checks import findings_of
+
     found = []
     if prepared.structure_problem:
         found.append(
@@ -148,4 +150,6 @@ def physics_warnings(prepared: Prepared) -> list[Warned]:
                 f"{prepared.content.formula}: {prepared.structure_problem}",
             )
         )
+    phase = entry_of(prepared, uid="", by="", at="").phase()
+    found += [Warned(finding.kind, finding.text) for finding in findings_of(phase)]
     return found
