@@ -10,7 +10,7 @@ second entry of the same group takes no place in the ranking.
 
 *Honesty* is measured on every p >= 0.05. Of an entry: right if the sample holds that very entry; of the
 unlisted phase: right if the sample holds a phase that the library lacks, of that lattice type and a. Of a
-group (`group_probability`, once for each group): right if a phase of the sample, or a look-alike of one, is in it.
+group (`group_probability`, once for each): right if a phase of the sample, or a look-alike of one, is in it.
 """
 
 from __future__ import annotations

@@ -1,9 +1,11 @@
-"""What the best possible reading of a list could say: the ceiling for naming an entry, look-alikes.
+"""What the best possible reading of a list could say: the ceiling for naming an entry, and look-alikes.
 
-The oracle is given the true shift, noise scale, width, floor, shares, the other phases with their true
-lattice constants, and the drift distribution of each class. It puts every entry in the place of one true
-phase, at the lattice constants that lay its lines on the true ones, and compares evidence. Entries within a
-factor 20 of the true one are its look-alikes: this measurement cannot tell them apart.
+The oracle is given the true noise scale, width, floor, shares, the other phases with their true lattice
+constants, and the drift distribution of each class. It puts every entry in the place of one true phase, at
+the lattice constants that lay its lines on the true ones, and compares evidence, twice. With the true shift
+as well: is the true entry first? That is the ceiling for naming it. And with the shift unknown, as for anyone
+who measures (a shared shift of Student's t, scale 0.05 degrees): entries within a factor 20 of the true one
+are its look-alikes, which this measurement cannot tell apart.
 """
 
 from __future__ import annotations
@@ -25,6 +27,15 @@ RATIOS = (1.0, 2.0**0.5, 2.0**-0.5, 2.0, 0.5, 3.0**0.5, 3.0**-0.5, 1.5**0.5, 1.5
 
 MOST_DRIFT = 0.015
 
+SHAPE_NATS = 12.0
+"""An entry whose lines fit this much worse even at the lattice constant that suits it best is no rival."""
+
+SHIFTS_DEG = np.array([-0.2, -0.12, -0.07, -0.04, -0.02, 0.0, 0.02, 0.04, 0.07, 0.12, 0.2])
+"""Departures of the shared shift from the true one that are tried when it is unknown, degrees."""
+
+DRIFT_STEPS = np.linspace(-4.0, 4.0, 21)
+SHARE_FACTORS = np.exp(np.array([-0.5, 0.0, 0.5]))
+
 
 @dataclass(frozen=True, slots=True)
 class Verdict:
@@ -40,23 +51,40 @@ def judge(case: Case, table: PhaseTable, phase: TruePhase) -> Verdict:
     names = {name: row for row, name in enumerate(table.name)}
     view = _View.of(case)
     rest = [other for other in case.truth.phases if other is not phase]
-    base = np.zeros(len(case.peaks))
-    for other in rest:
-        base += view.rates(table, names[other.name], np.array([other.a_true]), np.array([other.share]))[0][0]
-    taken = {other.name for other in rest}
-    scores = {}
-    for row, a_values in candidates(table, phase):
-        name = table.name[row]
-        if name not in taken:
-            scores[name] = view.evidence(table, row, a_values, phase.share, base)
-    own = scores[phase.name]
-    values = np.array(list(scores.values()))
-    top = values.max()
+    others = [(names[other.name], other.a_true, other.share) for other in rest]
+    entries = [
+        (row, a) for row, a in candidates(table, phase) if table.name[row] not in {o.name for o in rest}
+    ]
+    known: dict[str, float] = {}
+    unknown: dict[str, float] = {}
+    weights = np.log(shift_weights(case.truth))
+    bases = [view.base(table, others, shift) for shift in SHIFTS_DEG]
+    middle = int(np.flatnonzero(SHIFTS_DEG == 0.0)[0])
+    shapes = {row: view.shape(table, row, a_values, phase.share, bases[middle]) for row, a_values in entries}
+    least_shape = shapes[names[phase.name]] - SHAPE_NATS
+    for row, a_values in entries:
+        if shapes[row] < least_shape:
+            continue
+        values = [
+            view.evidence(table, row, a_values, phase.share, base, shift)
+            for shift, base in zip(SHIFTS_DEG, bases, strict=True)
+        ]
+        known[table.name[row]] = values[middle]
+        unknown[table.name[row]] = float(np.logaddexp.reduce(np.array(values) + weights))
+    values = np.array(list(known.values()))
+    own, top = known[phase.name], values.max()
     probability = float(np.exp(own - top) / np.sum(np.exp(values - top)))
-    close = frozenset(
-        name for name, value in scores.items() if name != phase.name and value > own - LOOK_ALIKE_NATS
-    )
+    least = unknown[phase.name] - LOOK_ALIKE_NATS
+    close = frozenset(name for name, value in unknown.items() if name != phase.name and value > least)
     return Verdict(bool(own >= top), probability, close)
+
+
+def shift_weights(truth: Truth) -> FloatArray:
+    """Return the prior weight of each of `SHIFTS_DEG`: Student's t of the whole shift, by its grid cell."""
+    middle = float(np.median(truth.shift_at_lines_deg))
+    density = (1.0 + ((middle + SHIFTS_DEG) / 0.05) ** 2 / 3.0) ** -2.0
+    weights = density * np.gradient(SHIFTS_DEG)
+    return weights / weights.sum()
 
 
 def candidates(table: PhaseTable, phase: TruePhase) -> list[tuple[int, FloatArray]]:
@@ -131,10 +159,20 @@ class _View:
                    float(np.hypot(truth.intensity_spread, 0.4)), max(spurious, 0.3),
                    truth.wavelength_angstrom, truth)  # fmt: skip
 
+    def base(self, table: PhaseTable, others: list[tuple[int, float, float]], shift: float) -> FloatArray:
+        """Return the rate at each line of the other phases of the sample."""
+        total = np.zeros(len(self.x))
+        for row, a, share in others:
+            total += self.rates(table, row, np.array([a]), np.array([share]), shift)[0][0]
+        return total
+
     def rates(
-        self, table: PhaseTable, row: int, a: FloatArray, share: FloatArray
+        self, table: PhaseTable, row: int, a: FloatArray, share: FloatArray, shift: float
     ) -> tuple[FloatArray, FloatArray]:
-        """Return the rate at each line, (n_trials, n_lines), and the sum of log(1 - p), (n_trials,)."""
+        """Return the rate at each line, (n_trials, n_lines), and the sum of log(1 - p), (n_trials,).
+
+        `shift` is the departure from the true shift that is assumed, in degrees.
+        """
         n, strength = _lines(table, row, float(a.max()), self.wavelength)
         d = a[:, None] / np.sqrt(n)[None, :]
         angle = two_theta(d, self.wavelength)
@@ -145,7 +183,7 @@ class _View:
         height = share[:, None] * height / np.where(top > 0.0, top, 1.0)
         p = 0.97 / (1.0 + np.exp(-np.log(np.maximum(height, 1e-12) / self.truth.floor) / 0.5))
         p = np.where(inside, np.maximum(p, 1e-4), 0.0)
-        offset = (self.x[None, None, :] - angle[:, :, None]) / self.sigma[None, None, :]
+        offset = (self.x[None, None, :] - shift - angle[:, :, None]) / self.sigma[None, None, :]
         density = np.exp(-0.5 * np.minimum(offset**2, 60.0)) / (
             self.sigma[None, None, :] * np.sqrt(2.0 * np.pi)
         )
@@ -158,23 +196,55 @@ class _View:
         rate = np.einsum("tk,tki->ti", p / (1.0 - p), density)
         return rate, np.log1p(-p).sum(axis=1)
 
-    def evidence(
+    def shape(
         self, table: PhaseTable, row: int, a_values: FloatArray, share: float, base: FloatArray
     ) -> float:
+        """Return the best log likelihood of entry `row` at the true shift, whatever its drift."""
+        steps = np.linspace(-3.0, 3.0, 7) / np.sqrt(0.3 * self.information + 1.0)
+        best = -np.inf
+        for centre in a_values:
+            a = centre * (1.0 + steps)
+            rate, missing = self.rates(table, row, a, np.full(len(a), share), 0.0)
+            best = max(best, float(np.max(np.log(self.floor + base + rate).sum(axis=1) + missing)))
+        return best
+
+    @property
+    def floor(self) -> float:
+        """Density of lines that nothing explains, 1/degree."""
+        return self.background / (self.high - self.low)
+
+    @property
+    def slope(self) -> FloatArray:
+        """Degrees of 2theta for one unit of -ln a, at each line."""
+        return np.degrees(2.0 * np.tan(np.radians(self.x) / 2.0))
+
+    @property
+    def information(self) -> float:
+        """1 / variance of ln a from all lines."""
+        return float(np.sum((self.slope / self.sigma) ** 2))
+
+    def evidence(
+        self,
+        table: PhaseTable,
+        row: int,
+        a_values: FloatArray,
+        share: float,
+        base: FloatArray,
+        shift: float,
+    ) -> float:
         """Return the log evidence of entry `row` in the phase's place, drift and share integrated out."""
-        noise = self.background / (self.high - self.low)
-        tangent = np.tan(np.radians(self.x) / 2.0)
-        width = 1.0 / np.sqrt(np.sum((np.degrees(2.0 * tangent) / self.sigma) ** 2) * 0.3 + 1.0)
-        steps = np.linspace(-4.0, 4.0, 25) * width
-        factors = np.exp(np.array([-0.6, -0.3, 0.0, 0.3, 0.6]))
+        width = 1.0 / np.sqrt(0.3 * self.information + 1.0)
+        # where the fit puts ln a under this shift
+        moved = shift * np.sum(self.slope / self.sigma**2) / self.information
+        steps = moved + DRIFT_STEPS * width
         total = -np.inf
         for centre in a_values:
-            a = np.repeat(centre * (1.0 + steps), len(factors))
-            w = np.tile(share * factors, len(steps))
-            rate, missing = self.rates(table, row, a, w)
-            fit = np.log(noise + base[None, :] + rate).sum(axis=1) + missing
+            a = np.repeat(centre * (1.0 + steps), len(SHARE_FACTORS))
+            w = np.tile(share * SHARE_FACTORS, len(steps))
+            rate, missing = self.rates(table, row, a, w, shift)
+            fit = np.log(self.floor + base + rate).sum(axis=1) + missing
             prior = np.log(drift_density(table, row, a / table.a_angstrom[row] - 1.0))
-            terms = fit + prior + np.log(steps[1] - steps[0]) - np.log(len(factors))
+            terms = fit + prior + np.log(steps[1] - steps[0])
             total = np.logaddexp(total, np.logaddexp.reduce(terms))
         return float(total)
 
