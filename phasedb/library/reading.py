@@ -146,10 +146,8 @@ def lines_of(phase: Phase) -> Lines | None:
     """Return N and line strength of a phase with a structure; None where they cannot be computed."""
     if phase.structure is None:
         return None
-    try:
-        from phasedb.crystal.intensity import line_strengths
-    except ImportError:
-        return None
+    from phasedb.crystal.intensity import line_strengths
+
     return line_strengths(phase)
 
 
