@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 from phasedb.cli.common import examples, json_option, note, open_library, print_json, print_text
+from phasedb.cli.completion import complete_phase
 from phasedb.cli.peak_options import PeakOptions, peak_options
 from phasedb.errors import InputError
 
@@ -22,7 +23,7 @@ if TYPE_CHECKING:
     )
 )
 @click.argument("peaks_file", metavar="PEAKS", type=click.Path())
-@click.option("--phase", metavar="NAME", help="A stored phase to start from.")
+@click.option("--phase", metavar="NAME", shell_complete=complete_phase, help="A stored phase to start from.")
 @click.option("--lattice", metavar="P|I|F", help="Lattice type, if no phase is named.")
 @click.option("--a", "a_text", metavar="A", help="Rough lattice constant: 4.39, 0.439 nm.")
 @peak_options

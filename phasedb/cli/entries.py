@@ -8,7 +8,8 @@ from typing import TYPE_CHECKING, Any, TypeVar
 import click
 
 from phasedb.cli import Settings
-from phasedb.cli.common import json_option, note, open_library, print_json
+from phasedb.cli.common import examples, json_option, note, open_library, print_json
+from phasedb.cli.completion import complete_phase
 from phasedb.errors import InputError
 
 if TYPE_CHECKING:
@@ -21,15 +22,17 @@ _VERSION = click.option(
 )
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        "phasedb init",
+        "phasedb --store lab.sqlite init --empty",
+    )
+)
 @click.option("--empty", is_flag=True, help="Without the starter library.")
 @json_option
 @click.pass_context
 def init(ctx: click.Context, empty: bool, as_json: bool) -> None:
-    """Make a store, with the starter library.
-
-    Example: phasedb --store lab.sqlite init
-    """
+    """Make a store, with the starter library."""
     from phasedb.library import Library
 
     settings: Settings = ctx.find_root().obj
@@ -85,15 +88,17 @@ def _content_options(*, required: bool) -> Callable[[_Command], _Command]:
     return decorate
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        'phasedb add --name "our nitride" --formula TiN --lattice F --a "4.2417(2)" --structure B1',
+        'phasedb add --name "mill gold" --formula Au --lattice F --a "0.40786 nm"',
+    )
+)
 @_content_options(required=True)
 @json_option
 @click.pass_context
 def add(ctx: click.Context, /, accept_warning: bool, as_json: bool, **given: Any) -> None:
-    """Enter a phase as a draft.
-
-    Example: phasedb add --name "our nitride" --formula TiN --lattice F --a "4.2417(2)" --structure B1
-    """
+    """Enter a phase as a draft."""
     from phasedb.library.options import draft_from_options
 
     draft = draft_from_options(given)
@@ -101,8 +106,13 @@ def add(ctx: click.Context, /, accept_warning: bool, as_json: bool, **given: Any
     _say_outcome(library, library.add(draft, accept_warnings=accept_warning), "entered", as_json)
 
 
-@click.command()
-@click.argument("entry", metavar="NAME")
+@click.command(
+    epilog=examples(
+        'phasedb revise "our nitride" --a "4.2420(1)" --reason "new standard" --expect-version 1',
+        'phasedb revise "our nitride" --alias "coating 7" --reason "the coater\'s name for it"',
+    )
+)
+@click.argument("entry", metavar="NAME", shell_complete=complete_phase)
 @_content_options(required=False)
 @click.option("--reason", default="", metavar="TEXT", help="Why; kept in the history.")
 @_VERSION
@@ -118,9 +128,9 @@ def revise(
     as_json: bool,
     **given: Any,
 ) -> None:
-    """Change an entry; what is not given stays. An empty text clears a field; "none" clears aliases or tags.
+    """Change an entry; what is not given stays.
 
-    Example: phasedb revise "our nitride" --a "4.2420(1)" --reason "new standard" --expect-version 1
+    An empty text clears a field; "none" clears aliases or tags.
     """
     from phasedb.library.options import changes_from_options
 
@@ -165,25 +175,32 @@ def _say(library: Library, entry: Entry, action: str, as_json: bool, **more: Any
     )
 
 
-@click.command()
-@click.argument("name")
+@click.command(
+    epilog=examples(
+        'phasedb --by "B. Second" check "our nitride"',
+        'phasedb --by "B. Second" check silver --remark "compared with the cited table"',
+    )
+)
+@click.argument("name", shell_complete=complete_phase)
 @_VERSION
 @click.option("--remark", default="", metavar="TEXT", help="How it was checked; kept in the history.")
 @json_option
 @click.pass_context
 def check(ctx: click.Context, name: str, expect_version: int | None, remark: str, as_json: bool) -> None:
-    """Confirm an entry as a second person.
-
-    Example: phasedb --by "B. Second" check "our nitride"
-    """
+    """Confirm an entry as a second person."""
     library = open_library(ctx, write=True)
     _say(library, library.check(name, expect_version=expect_version, remark=remark), "checked", as_json)
 
 
-@click.command()
-@click.argument("name")
+@click.command(
+    epilog=examples(
+        'phasedb withdraw "our nitride" --reason "a was in kX" --replaced-by "titanium nitride"',
+        'phasedb withdraw "mill gold" --reason "the powder was an alloy"',
+    )
+)
+@click.argument("name", shell_complete=complete_phase)
 @click.option("--reason", required=True, metavar="T", help="Why it is wrong or superseded.")
-@click.option("--replaced-by", metavar="N", help="The entry to use instead.")
+@click.option("--replaced-by", metavar="N", shell_complete=complete_phase, help="The entry to use instead.")
 @_VERSION
 @json_option
 @click.pass_context
@@ -195,17 +212,20 @@ def withdraw(
     expect_version: int | None,
     as_json: bool,
 ) -> None:
-    """Take an entry out of use, with a reason. It keeps its name and history.
-
-    Example: phasedb withdraw "our nitride" --reason "a was in kX" --replaced-by "titanium nitride"
-    """
+    """Take an entry out of use, with a reason. It keeps its name and history."""
     library = open_library(ctx, write=True)
     entry = library.withdraw(name, reason=reason, replaced_by=replaced_by, expect_version=expect_version)
     _say(library, entry, "withdrawn", as_json, reason=entry.withdrawn_reason)
 
 
-@click.command("restore-entry")
-@click.argument("name")
+@click.command(
+    "restore-entry",
+    epilog=examples(
+        'phasedb restore-entry "our nitride" --reason "the value was right"',
+        'phasedb restore-entry "mill gold" --reason "withdrawn by mistake" --json',
+    ),
+)
+@click.argument("name", shell_complete=complete_phase)
 @click.option("--reason", required=True, metavar="T", help="Why it is right after all.")
 @_VERSION
 @json_option
@@ -213,24 +233,23 @@ def withdraw(
 def restore_entry(
     ctx: click.Context, name: str, reason: str, expect_version: int | None, as_json: bool
 ) -> None:
-    """Make a withdrawn entry a draft again.
-
-    Example: phasedb restore-entry "our nitride" --reason "the value was right"
-    """
+    """Make a withdrawn entry a draft again."""
     library = open_library(ctx, write=True)
     entry = library.restore_entry(name, reason=reason, expect_version=expect_version)
     _say(library, entry, "restored", as_json)
 
 
-@click.command()
-@click.argument("name")
+@click.command(
+    epilog=examples(
+        "phasedb show silicon",
+        'phasedb show "titanium nitride" --json',
+    )
+)
+@click.argument("name", shell_complete=complete_phase)
 @json_option
 @click.pass_context
 def show(ctx: click.Context, name: str, as_json: bool) -> None:
-    """Show one entry: cell, sources, standing.
-
-    Example: phasedb show silicon
-    """
+    """Show one entry: cell, sources, standing."""
     from phasedb.library import showing
 
     library = open_library(ctx)
@@ -246,7 +265,13 @@ def show(ctx: click.Context, name: str, as_json: bool) -> None:
             click.echo(line)
 
 
-@click.command("list")
+@click.command(
+    "list",
+    epilog=examples(
+        "phasedb list --element Ti --lattice F --a-min 4.2 --a-max 4.3",
+        "phasedb list --text spinel --json",
+    ),
+)
 @click.option("--element", "elements", multiple=True, metavar="E", help="In the formula; may be repeated.")
 @click.option("--lattice", metavar="P|I|F", help="Lattice type.")
 @click.option("--a-min", metavar="A", help="Least lattice constant, Å or with a unit.")
@@ -269,10 +294,7 @@ def list_phases(
     as_of: str | None,
     as_json: bool,
 ) -> None:
-    """List entries that fit some filters.
-
-    Example: phasedb list --element Ti --lattice F --a-min 4.2 --a-max 4.3
-    """
+    """List entries that fit some filters."""
     from phasedb.library import showing
     from phasedb.library.options import filters_from_options
 
@@ -304,15 +326,17 @@ def _library_as_of(ctx: click.Context, as_of: str | None) -> Library:
     return library
 
 
-@click.command()
-@click.argument("name", required=False)
+@click.command(
+    epilog=examples(
+        "phasedb history silicon",
+        "phasedb history --json",
+    )
+)
+@click.argument("name", required=False, shell_complete=complete_phase)
 @json_option
 @click.pass_context
 def history(ctx: click.Context, name: str | None, as_json: bool) -> None:
-    """Read what changed, by whom, when and why: of one entry, or of everything.
-
-    Example: phasedb history silicon
-    """
+    """Read what changed, by whom, when and why: of one entry, or of everything."""
     from phasedb.library import showing
 
     if name is not None and not name.strip():

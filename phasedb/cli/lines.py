@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 import click
 
 from phasedb.cli.common import examples, json_option, note, open_library, print_json
+from phasedb.cli.completion import complete_phase
 
 if TYPE_CHECKING:
     from phasedb.crystal.line_list import IdealLine
@@ -20,7 +21,7 @@ if TYPE_CHECKING:
         "phasedb lines gold --radiation electron --energy-kv 200",
     )
 )
-@click.argument("name")
+@click.argument("name", shell_complete=complete_phase)
 @click.option("--radiation", metavar="NAME", help="Cu (default), Co, Mo, Cr, Fe, Ag, Cu-Ka1, electron.")
 @click.option("--wavelength", type=float, metavar="A", help="Wavelength in Å, instead of a name.")
 @click.option("--energy-kv", type=float, metavar="KV", help="Electron energy in kV.")

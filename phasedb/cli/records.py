@@ -163,7 +163,12 @@ def _labels(found: Identification) -> list[tuple[str, str]]:
 # --- sign
 
 
-@click.command(epilog=examples('phasedb --by "B. Second" sign 12 --remark "compared with the raw scan"'))
+@click.command(
+    epilog=examples(
+        'phasedb --by "B. Second" sign 12',
+        'phasedb --by "B. Second" sign 12 --remark "compared with the raw scan"',
+    )
+)
 @click.argument("number", metavar="ID")
 @click.option("--remark", default="", metavar="TEXT", help="What was looked at; kept with the signature.")
 @json_option

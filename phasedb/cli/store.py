@@ -7,11 +7,16 @@ from pathlib import Path
 import click
 
 from phasedb.cli import Settings
-from phasedb.cli.common import json_option, note, open_library, print_json
+from phasedb.cli.common import examples, json_option, note, open_library, print_json
 from phasedb.errors import StoreError
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        "phasedb audit",
+        "phasedb audit --expect 3f2a9c0d11e7",
+    )
+)
 @click.option("--expect", metavar="HEAD", help="A history head kept outside, as a backup or report gives it.")
 @json_option
 @click.pass_context
@@ -20,8 +25,6 @@ def audit(ctx: click.Context, expect: str | None, as_json: bool) -> None:
 
     Checks the file, the chain of the history and every entry against the replay of its history. A chain
     cannot see that its end was cut off: --expect compares it with a head kept outside the store.
-
-    Example: phasedb audit --expect 3f2a9c0d11e7
     """
     from phasedb.library.audit import audit as prove
 
@@ -60,15 +63,17 @@ def audit(ctx: click.Context, expect: str | None, as_json: bool) -> None:
         )
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        "phasedb backup lab-2026-03-01.sqlite",
+        "phasedb --store lab.sqlite backup copy.sqlite --json",
+    )
+)
 @click.argument("file", type=click.Path(path_type=Path))
 @json_option
 @click.pass_context
 def backup(ctx: click.Context, file: Path, as_json: bool) -> None:
-    """Copy the store while it is in use, and prove the copy.
-
-    Example: phasedb backup lab-2026-03-01.sqlite
-    """
+    """Copy the store while it is in use, and prove the copy."""
     from phasedb.library import Library
     from phasedb.library.backup import backup as copy_store
     from phasedb.library.connect import store_place
@@ -90,16 +95,18 @@ def backup(ctx: click.Context, file: Path, as_json: bool) -> None:
     note("Keep the head outside the store: 'phasedb audit --expect HEAD' compares with it.")
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        "phasedb restore lab-2026-03-01.sqlite --replace",
+        "phasedb --store new.sqlite restore lab-2026-03-01.sqlite",
+    )
+)
 @click.argument("file", type=click.Path(path_type=Path))
 @click.option("--replace", is_flag=True, help="Replace the store; the old one is kept beside it.")
 @json_option
 @click.pass_context
 def restore(ctx: click.Context, file: Path, replace: bool, as_json: bool) -> None:
-    """Put a backup in the store's place.
-
-    Example: phasedb restore lab-2026-03-01.sqlite --replace
-    """
+    """Put a backup in the store's place."""
     from phasedb.library import Library
     from phasedb.library.backup import restore as put_back
     from phasedb.library.connect import store_place
@@ -123,7 +130,12 @@ def restore(ctx: click.Context, file: Path, replace: bool, as_json: bool) -> Non
         click.echo(f"the store that was there is kept as {copied.kept_aside}")
 
 
-@click.command()
+@click.command(
+    epilog=examples(
+        "phasedb upgrade --dry-run",
+        "phasedb --store lab.sqlite upgrade",
+    )
+)
 @click.option("--dry-run", is_flag=True, help="Try it on a copy in memory; change nothing.")
 @json_option
 @click.pass_context
@@ -131,8 +143,6 @@ def upgrade(ctx: click.Context, dry_run: bool, as_json: bool) -> None:
     """Bring an older store up to date, after a proved backup.
 
     Colleagues with an older program cannot use the store afterwards.
-
-    Example: phasedb upgrade --dry-run
     """
     from phasedb.library.connect import store_place
     from phasedb.library.upgrading import upgrade as bring_up
