@@ -60,22 +60,37 @@ def split_text(text: str, source: str, *, keys: frozenset[str]) -> DelimitedText
     InputError
         If a comma may be a decimal comma or a delimiter, or a key has two values.
     """
-    header: dict[str, HeaderValue] = {}
-    content: list[tuple[int, str]] = []
-    for number, line in enumerate(_LINE_END.split(text), start=1):
-        bare = line.strip()
-        if bare.startswith("#"):
-            _take_key(bare, number, header, keys, source)
-        elif bare:
-            content.append((number, line))
+    lines = _LINE_END.split(text)
+    header = header_values(lines, source, keys=keys)
+    content = [(number, line) for number, line in enumerate(lines, 1) if _is_content(line)]
     if not content:
         return DelimitedText(header, (), ())
-    delimiter = _delimiter_of(content, source)
+    delimiter = delimiter_of(content, source)
     rows = (_without_empty_tail(_cells(line, number, delimiter)) for number, line in content)
     kept = tuple(row for row in rows if row)
     if kept and not looks_numeric(kept[0][0].text):
         return DelimitedText(header, kept[0], kept[1:])
     return DelimitedText(header, (), kept)
+
+
+def header_values(lines: list[str], source: str, *, keys: frozenset[str]) -> dict[str, HeaderValue]:
+    """Return the values of the comments ``# key: value`` whose casefolded key is in `keys`.
+
+    Raises
+    ------
+    InputError
+        If a key has two values.
+    """
+    header: dict[str, HeaderValue] = {}
+    for number, line in enumerate(lines, 1):
+        if line.lstrip().startswith("#"):
+            _take_key(line.strip(), number, header, keys, source)
+    return header
+
+
+def _is_content(line: str) -> bool:
+    bare = line.strip()
+    return bool(bare) and bare[0] != "#"
 
 
 def looks_numeric(text: str) -> bool:
@@ -169,8 +184,14 @@ def _take_key(
     header[key] = HeaderValue(found[2], number)
 
 
-def _delimiter_of(content: list[tuple[int, str]], source: str) -> str:
-    """Return ``;``, tab, ``,`` or a space, judged from the first rows."""
+def delimiter_of(content: list[tuple[int, str]], source: str) -> str:
+    """Return ``;``, tab, ``,`` or a space, judged from the first rows (line number, text).
+
+    Raises
+    ------
+    InputError
+        If a comma may be a decimal comma or a delimiter.
+    """
     sample = content[:50]
     for sign in (";", "\t"):
         if all(sign in line for _, line in sample[:1]) or sum(sign in line for _, line in sample) > 25:
