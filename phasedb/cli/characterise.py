@@ -7,13 +7,98 @@ from typing import TYPE_CHECKING
 
 import click
 
-from phasedb.cli.common import examples, json_option, note, open_library, print_json, print_text
+from phasedb.cli.common import (
+    document_text,
+    examples,
+    json_option,
+    note,
+    open_library,
+    print_json,
+    print_text,
+)
 from phasedb.cli.completion import complete_phase
 from phasedb.cli.peak_options import PeakOptions, peak_options
+from phasedb.cli.progress import Progress
 from phasedb.errors import InputError
 
 if TYPE_CHECKING:
     from phasedb.characterise.cells import StartingCell
+    from phasedb.measured.scan_result import ScanResult
+
+
+@click.command(
+    epilog=examples(
+        "phasedb peaks scan.xy --radiation Cu -o unknown.csv --figure unknown.svg",
+        "phasedb match unknown.csv",
+    )
+)
+@click.argument("scan_file", metavar="SCAN", type=click.Path())
+@peak_options
+@click.option(
+    "--false-lines",
+    type=click.FloatRange(min=1e-6, max=100.0),
+    metavar="X",
+    help="Lines that noise alone may give, over the scan (default 0.1).",
+)
+@click.option("-o", "--output", metavar="FILE", help="Write the list there instead of on stdout.")
+@click.option("--figure", metavar="FILE", help="Also draw scan, fit and lines: .svg, .png or .pdf.")
+@json_option
+@click.pass_context
+def peaks(
+    ctx: click.Context,
+    scan_file: str,
+    measured: PeakOptions,
+    false_lines: float | None,
+    output: str | None,
+    figure: str | None,
+    as_json: bool,
+) -> None:
+    """Find the lines of a scan and write a peak list.
+
+    SCAN is text with two or three columns (2theta, counts, perhaps their standard uncertainty) or CIF;
+    - reads standard input. The list goes to stdout in a form that match reads.
+    """
+    from phasedb.measured.list_writing import peaks_document, peaks_text
+    from phasedb.measured.peak_finding import FALSE_LINES, find_lines
+    from phasedb.measured.scan import read_scan
+
+    if figure is not None:
+        from phasedb.report.drawing import figure_format
+
+        figure_format(Path(figure))
+    scan = read_scan(scan_file, measured.read_options(ctx))
+    with Progress(100, "% of the work") as progress:
+        found = find_lines(
+            scan,
+            false_lines=false_lines or FALSE_LINES,
+            progress=lambda share, _: progress.step(round(100 * share) - progress.done),
+        )
+    text = document_text(peaks_document(found)) if as_json else peaks_text(found)
+    if output is not None:
+        from phasedb.report.drawing import write_file
+
+        write_file(Path(output), text.encode("utf-8"))
+    else:
+        click.echo(text, nl=False)
+    if figure is not None:
+        from phasedb.report.scan_figure import peaks_figure
+
+        peaks_figure(found, Path(figure))
+        note(f"figure written to {figure}")
+    note(_found_text(found))
+    for remark in found.notes:
+        note(f"note: {remark}")
+    if scan.radiation is None:
+        note("note: no radiation is known: give it here or to match, else K-alpha2 lines count as lines")
+
+
+def _found_text(found: ScanResult) -> str:
+    count = len(found.lines)
+    return (
+        f"{count} line{'' if count == 1 else 's'} in {len(found.scan)} points, "
+        f"{found.scan.two_theta_deg[0]:.2f} to {found.scan.two_theta_deg[-1]:.2f} deg; "
+        f"noise from {found.noise_origin}; at most {found.false_lines:g} expected from noise alone"
+    )
 
 
 @click.command(

@@ -23,9 +23,14 @@ def json_option(command: _Command) -> _Command:
     return click.option("--json", "as_json", is_flag=True, help="Print JSON.")(command)
 
 
+def document_text(document: dict[str, Any]) -> str:
+    """Return one JSON document as text, with a line end; NaN is a bug, so it is refused here."""
+    return json.dumps(document, allow_nan=False, ensure_ascii=False, indent=1) + "\n"
+
+
 def print_json(document: dict[str, Any]) -> None:
-    """Print one JSON document on stdout; NaN is a bug, so it is refused here."""
-    click.echo(json.dumps(document, allow_nan=False, ensure_ascii=False, indent=1))
+    """Print one JSON document on stdout."""
+    click.echo(document_text(document), nl=False)
 
 
 def note(text: str) -> None:

@@ -13,7 +13,9 @@ from phasedb.measured.raw import RawLines
 
 SCHEMA: Final = "phasedb.peaks/1"
 _PEAK_KEYS: Final = ("position", "intensity", "esd", "fwhm")
-_TOP_KEYS: Final = frozenset({"schema", "peaks", "unit", *HEADER_KEYS})
+_OUR_EXTRAS: Final = frozenset({"fwhm_esd", "area", "area_esd", "height", "lorentzian", "chi2_reduced"})
+"""What ``phasedb peaks --json`` tells of a line beside what a match needs."""
+_TOP_KEYS: Final = frozenset({"schema", "peaks", "unit", "scan", *HEADER_KEYS})
 
 
 def read_json_list(text: str, source: str) -> RawLines:
@@ -44,7 +46,7 @@ def read_json_list(text: str, source: str) -> RawLines:
         places.append(place)
         if not isinstance(peak, dict):
             raise InputError(f"read {peak!r}, expected an object with 'position'", where=place)
-        ignored.update(str(key) for key in peak if key not in _PEAK_KEYS)
+        ignored.update(str(key) for key in peak if key not in _PEAK_KEYS and key not in _OUR_EXTRAS)
         for name in _PEAK_KEYS:
             columns[name].append(_number(peak.get(name), name, place))
     unit = document.get("unit")
