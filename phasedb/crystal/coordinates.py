@@ -169,5 +169,5 @@ def nearest_image(name: str, point: FloatArray, typical: Position) -> tuple[floa
     difference -= np.round(difference)
     distance = np.sqrt((difference**2).sum(axis=1))
     best = int(np.argmin(np.round(distance, 9)))
-    x, y, z = (float(value) for value in np.asarray(typical) + difference[best])
+    x, y, z = (round(float(value), 10) for value in np.asarray(typical) + difference[best])
     return float(distance[best]), (x, y, z)
