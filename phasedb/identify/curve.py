@@ -21,6 +21,7 @@ FloatArray = NDArray[np.float64]
 A_SMALLEST: Final = 2.3
 A_LARGEST: Final = 17.0
 MOST_LINES_VOTING: Final = 120  # the strongest ones of a longer list
+LEAST_VOTE: Final = 0.02
 STAMP_HALF_WIDTH: Final = 3.2  # standard deviations
 
 # Chance that the line of rank r of an unknown phase is seen: high for the first lines, lower as the cell grows
@@ -87,24 +88,25 @@ def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Cur
     gain = np.maximum(
         1.0 / (sigma * np.sqrt(2.0 * np.pi) * base[use]) * (sigma / slope) / width, explained[use]
     )
+    reach = int(np.ceil(STAMP_HALF_WIDTH * float(width.max()) / step))
+    offset = np.arange(-reach, reach + 1)
+    # one stamp for each line: to half a step, which the width outweighs, every N lands on a grid point
+    stamp = np.exp(-0.5 * (offset * step / width[:, None]) ** 2)
     values = np.empty((3, count))
     grid = start + step * np.arange(count)
     for row, lattice in enumerate(LATTICE_TYPES):
         n_top = int(np.exp(2.0 * (np.log(A_LARGEST) - ln_d.min()))) + 1
         n = allowed_n(lattice, min(n_top, 1500))
         chance = _rank_chance(lattice, len(n))
+        odds = chance / (1.0 - chance)
         half = 0.5 * np.log(n)
         centre = ln_d[:, None] + half
-        line, rank = np.nonzero((centre > start) & (centre < start + step * (count - 1)))
-        c, w = centre[line, rank], width[line]
-        strength = (chance / (1.0 - chance))[rank] * gain[line]
-        reach = int(np.ceil(STAMP_HALF_WIDTH * width.max() / step))
-        offset = np.arange(-reach, reach + 1)
-        middle = np.rint((c - start) / step).astype(np.int64)
-        index = middle[:, None] + offset
-        z = (start + index * step - c[:, None]) / w[:, None]
-        weight = strength[:, None] * np.exp(-0.5 * z * z)
-        ok = (index >= 0) & (index < count) & (np.abs(z) < STAMP_HALF_WIDTH + 0.5)
+        middle = np.rint((centre - start) / step).astype(np.int64)
+        line, rank = np.nonzero((middle >= 0) & (middle < count))
+        strength = odds[rank] * gain[line]
+        index = middle[line, rank][:, None] + offset
+        weight = strength[:, None] * stamp[line]
+        ok = (weight > LEAST_VOTE) & (index >= 0) & (index < count)
         flat = (line[:, None] * count + index)[ok]
         votes = np.bincount(flat, weights=weight[ok], minlength=len(use) * count).reshape(len(use), count)
         total = np.zeros(count)

@@ -40,8 +40,9 @@ SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
 DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
 N_ITERATIONS: Final = 7
+N_ROUGH: Final = 3  # iterations before hopeless sets are dropped
 SET_SHARES_AT: Final = (0, 1, 3, 5)
-FIND_NEIGHBOURS_AT: Final = (0, 2, 4)  # iterations that look up anew which lines lie beside each other
+FIND_NEIGHBOURS_AT: Final = (0, 2, 3, 5)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
 N_SHIFT: Final = 3  # shift terms: zero, displacement, doublet
@@ -165,6 +166,40 @@ class _Fit:
         self.rate = np.full(self.n_sets, max(1.0, self.n / 4.0))
         self.use_heights = False
         self.x_line = np.empty((0, 0, 0))
+
+    def subset(self, pool: Pool, rows: IntArray) -> _Fit:
+        """Return some of the sets, as far as they are fitted."""
+        part = _Fit(self.axis, pool, self.members[rows], self.phi[rows], self.u[rows], self.ln_sigma[rows])
+        part.ln_share = self.ln_share[rows]
+        part.rate = self.rate[rows]
+        part.use_heights = self.use_heights
+        return part
+
+    def iterate(self, first: int, last: int) -> None:
+        """Run iterations `first` to `last` - 1 of the fit."""
+        for iteration in range(first, last):
+            if iteration in FIND_NEIGHBOURS_AT:
+                self.predict()
+            else:
+                self.place_neighbours()
+            self.respond()
+            if iteration in SET_SHARES_AT:
+                self.update_shares()
+                self.respond()
+            self.step()
+
+    def rough_evidence(self) -> FloatArray:
+        """Return log evidence up to terms that hardly differ between sets of one size."""
+        inside = self.in_range()
+        p = self.chance_seen(self.ln_share[..., None], self.height, self.frequency * inside)
+        drift = log_student(self.drift(), np.maximum(self.scale, 1e-12), DRIFT_TAIL) + np.log(
+            np.maximum(self.scale, 1e-12)
+        )
+        prior = np.where(self.unlisted, 0.0, drift).sum(axis=1)
+        prior += log_student(self.phi - self.axis.shift_mean, self.axis.shift_scale, SHIFT_TAIL).sum(axis=1)
+        return np.asarray(
+            np.log(self.total).sum(axis=1) - self.rate + np.log1p(-p).sum(axis=(1, 2)) + prior + self.ln_odds
+        )
 
     # -- predicted lines -------------------------------------------------------------------------
 
@@ -494,9 +529,18 @@ LARGEST_BATCH: Final = 3_000_000
 
 
 def evaluate(
-    axis: Axis, pool: Pool, members: IntArray, phi: FloatArray, ln_a: FloatArray, ln_sigma: FloatArray
-) -> Evaluated:
-    """Fit and integrate sets of equal size.
+    axis: Axis,
+    pool: Pool,
+    members: IntArray,
+    phi: FloatArray,
+    ln_a: FloatArray,
+    ln_sigma: FloatArray,
+    *,
+    margin: float,
+) -> tuple[Evaluated, IntArray]:
+    """Fit and integrate sets of equal size; return the fitted ones and their rows in `members`.
+
+    Sets whose rough evidence after a few iterations lies more than `margin` (nats) below the best are dropped.
 
     Parameters
     ----------
@@ -508,23 +552,26 @@ def evaluate(
     m = members.shape[1]
     cost = m * len(axis.x) * pool.lines.n.shape[1]
     batch = max(1, LARGEST_BATCH // max(cost, 1))
-    parts = []
+    fits = []
     for start in range(0, len(members), batch):
         rows = slice(start, start + batch)
         fit = _Fit(axis, pool, members[rows], phi[rows], ln_a[rows], ln_sigma[rows])
-        for iteration in range(N_ITERATIONS):
-            if iteration in FIND_NEIGHBOURS_AT:
-                fit.predict()
-            else:
-                fit.place_neighbours()
-            fit.respond()
-            if iteration in SET_SHARES_AT:
-                fit.update_shares()
-                fit.respond()
-            fit.step()
-        parts.append(fit.finish())
-    if len(parts) == 1:
-        return parts[0]
-    return Evaluated(
-        *(np.concatenate([getattr(part, name) for part in parts]) for name in Evaluated.__dataclass_fields__)
-    )
+        fit.iterate(0, N_ROUGH)
+        fits.append(fit)
+    rough = np.concatenate([fit.rough_evidence() for fit in fits])
+    keep = rough > rough.max() - margin
+    parts, first = [], 0
+    for fit in fits:
+        kept = np.flatnonzero(keep[first : first + fit.n_sets])
+        first += fit.n_sets
+        if len(kept):
+            finer = fit.subset(pool, kept)
+            finer.iterate(N_ROUGH, N_ITERATIONS)
+            parts.append(finer.finish())
+    result = parts[0] if len(parts) == 1 else _joined(parts)
+    return result, np.flatnonzero(keep)
+
+
+def _joined(parts: list[Evaluated]) -> Evaluated:
+    names = Evaluated.__dataclass_fields__
+    return Evaluated(*(np.concatenate([getattr(part, name) for part in parts]) for name in names))

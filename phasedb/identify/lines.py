@@ -17,9 +17,9 @@ from phasedb.identify.axis import KIND_ALPHA2, Axis
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-MOST_LINES_OF_A_PHASE: Final = 72
-WEAKEST_LINE: Final = 1e-3  # of the strongest in range: below any list's floor
-GHOST_PARENT: Final = 0.15  # ghosts are looked for beside lines at least this strong
+MOST_LINES_OF_A_PHASE: Final = 64
+WEAKEST_LINE: Final = 2e-3  # of the strongest in range: below any list's floor
+GHOST_PARENT: Final = 0.3  # ghosts are looked for beside lines at least this strong
 EDGE_REACH: Final = 0.03  # ln a: how far a candidate may move; lines that could enter the range are kept
 
 
@@ -187,7 +187,7 @@ def _with_ghosts(axis: Axis, table: LineTable) -> LineTable:
     n, half, heights = [table.n], [table.half_ln_n], [height]
     frequency, kind = [table.frequency], [table.kind]
     for ghost in axis.ghosts:
-        parent = height >= GHOST_PARENT * (0.3 if ghost.kind == KIND_ALPHA2 else 1.0)
+        parent = height >= GHOST_PARENT * (0.5 if ghost.kind == KIND_ALPHA2 else 1.0)
         n.append(table.n)
         half.append(np.where(parent, table.half_ln_n + np.log(ghost.wavelength_ratio), np.inf))
         heights.append(np.where(parent, height * ghost.height, 0.0))

@@ -43,6 +43,10 @@ N_PARENTS: Final = 6
 N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
 PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
+# nats in the rough evidence below the best, beyond which a set is not fitted to the end
+MARGIN_SINGLE: Final = 40.0
+MARGIN_NEXT: Final = 20.0
+MARGIN_FINAL: Final = 14.0
 HOPELESS: Final = 12.0  # sets this far (nats) below the best are not grown
 STARTS: Final = 2
 
@@ -290,7 +294,7 @@ class Search:
             used: list[Cell] = []
             for which in ranked:
                 cell = curves[which_cell[which, index]].cell
-                if scores[which, index] < best[index] - 6.0 or len(used) == STARTS:
+                if scores[which, index] < best[index] - 4.0 or len(used) == STARTS:
                     break
                 used.append(cell)
                 start = Start(
@@ -360,7 +364,7 @@ class Search:
 
     # -- evaluation ------------------------------------------------------------------------------
 
-    def _evaluate(self, starts: Iterable[Start]) -> list[Fitted]:
+    def _evaluate(self, starts: Iterable[Start], margin: float) -> list[Fitted]:
         """Evaluate new sets (several starts of one set compete) and remember them."""
         by_size: dict[int, list[Start]] = {}
         for start in starts:
@@ -368,15 +372,17 @@ class Search:
                 by_size.setdefault(len(start.members), []).append(start)
         fresh: dict[Key, Fitted] = {}
         for group in by_size.values():
-            batch = evaluate(
+            batch, kept = evaluate(
                 self.axis,
                 self.candidates.pool,
                 np.array([start.members for start in group]),
                 np.array([start.phi for start in group]),
                 np.array([start.ln_a for start in group]),
                 np.array([start.ln_sigma for start in group]),
+                margin=margin,
             )
-            for row, start in enumerate(group):
+            for row, number in enumerate(kept.tolist()):
+                start = group[number]
                 evidence = float(batch.log_evidence[row])
                 key = tuple(sorted(start.members))
                 if not np.isfinite(evidence) or self._collides(start.members, batch.ln_a[row]):
@@ -429,7 +435,7 @@ class Search:
         for _ in range(1, self.most_phases):
             parents = self._distinct(level, N_PARENTS, best - HOPELESS)
             starts = [start for parent in parents for _, start in self._propose(parent.key, N_NEXT)]
-            level = self._evaluate(starts)
+            level = self._evaluate(starts, MARGIN_NEXT)
             if not level:
                 break
             top = max(fit.log_evidence for fit in level)
@@ -441,7 +447,7 @@ class Search:
     def _first_level(self) -> list[Fitted]:
         starts = [start for _, start in self._propose((), N_SINGLE)]
         if not self.always:
-            return self._evaluate(starts)
+            return self._evaluate(starts, MARGIN_SINGLE)
         (standard,) = self.always
         own = [start for start in starts if start.members == (standard,)]
         ln_a = float(self.candidates.pool.ln_a[standard])
@@ -449,7 +455,7 @@ class Search:
             Start((standard,), cell.phi, (ln_a,), float(np.log(cell.sigma)))
             for cell in (curve.cell for curve in self.first_curves)
         ]
-        return self._evaluate(own)
+        return self._evaluate(own, MARGIN_SINGLE)
 
     def _exchange(self, best: float) -> None:
         """Try every other candidate in each place of the best sets: look-alikes must all be weighed."""
@@ -464,7 +470,7 @@ class Search:
                 if rest not in self.found:
                     continue
                 starts += [start for _, start in self._propose(rest, N_NEXT)]
-            self._evaluate(starts)
+            self._evaluate(starts, MARGIN_FINAL)
 
     def axis_curves(self, points: int = 1600) -> tuple[AxisCurve, ...]:
         """Return the first votes, the best over shift and noise, thinned for a figure."""
