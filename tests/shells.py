@@ -9,7 +9,9 @@ import select
 import signal
 import time
 
-_ESCAPES = re.compile(r"\x1b\[[0-9;?>=]*[a-zA-Z]|\x1b[()][AB0]|\x1b[=>]|\x1b\][^\x07\x1b]*(\x07|\x1b\\)|[\x07\r]")
+_ESCAPES = re.compile(
+    r"\x1b\[[0-9;?>=]*[a-zA-Z]|\x1b[()][AB0]|\x1b[=>]|\x1b\][^\x07\x1b]*(\x07|\x1b\\)|[\x07\r]"
+)
 
 
 def type_and_tab(shell, setup, typed, environment, *, seconds=15.0):
@@ -50,3 +52,28 @@ def read_quiet(master, seconds):
         elif seen:
             break
     return _ESCAPES.sub("", seen.decode("utf-8", "replace"))
+
+
+def in_terminal(command, *, columns=80, **environment):
+    """Return what a command prints on a terminal of that width."""
+    import fcntl
+    import struct
+    import termios
+
+    pid, master = pty.fork()
+    if pid == 0:
+        clean = {k: v for k, v in os.environ.items() if k not in ("NO_COLOR", "COLUMNS")}
+        os.execvpe(command[0], command, {**clean, "TERM": "xterm", **environment})
+    fcntl.ioctl(master, termios.TIOCSWINSZ, struct.pack("HHHH", 50, columns, 0, 0))
+    seen = b""
+    while True:
+        try:
+            chunk = os.read(master, 65536)
+        except OSError:  # how Linux says that the other end is closed
+            break
+        if not chunk:
+            break
+        seen += chunk
+    os.waitpid(pid, 0)
+    os.close(master)
+    return seen.decode("utf-8").replace("\r\n", "\n")

@@ -1,0 +1,115 @@
+"""What a terminal user meets: help with examples, suggestions, colour, completion."""
+
+from __future__ import annotations
+
+import os
+import re
+import shutil
+import sys
+
+import pytest
+from running import run
+from shells import in_terminal, type_and_tab
+
+from phasedb.cli import COMMANDS
+
+
+@pytest.mark.parametrize("command", COMMANDS)
+def test_every_help_has_two_examples_of_its_own(command):
+    ran = run(command, "--help")
+    assert ran.code == 0
+    examples = ran.out.split("Examples:")[1].splitlines()
+    own = [line.strip() for line in examples if line.strip().startswith("phasedb ")]
+    assert len(own) >= 2
+    assert all(re.match(rf"phasedb (--\S+ \S+ )*{command}\b", line) for line in own)
+    assert len(set(own)) == len(own)
+
+
+@pytest.mark.parametrize("command", COMMANDS)
+def test_every_option_in_an_example_exists(command):
+    helped = run(command, "--help").out
+    usage, _, examples = helped.partition("Examples:")
+    groups = [
+        usage,
+        *(run(command, sub, "--help").out for sub in re.findall(r"^  (add|list|show) ", usage, re.MULTILINE)),
+    ]
+    known = set(re.findall(r"(?<![\w-])(--?[a-zA-Z][\w-]*)", " ".join(groups))) | {"--store", "--by"}
+    used = set(re.findall(r"(?<![\w-])(--?[a-zA-Z][\w-]*)", examples))
+    assert used <= known
+
+
+@pytest.mark.parametrize("command", ["", *COMMANDS])
+def test_help_is_no_wider_than_80_columns_in_a_pipe(command):
+    ran = run(*([command] if command else []), "--help")
+    long = [
+        line for line in ran.out.splitlines() if len(line) > 80 and not line.strip().startswith("phasedb ")
+    ]
+    assert long == []
+
+
+def test_short_help_lines_are_short():
+    assert all(len(text) <= 60 for _, _, text in COMMANDS.values())
+
+
+@pytest.mark.parametrize(("typed", "meant"), [("mach", "match"), ("lst", "list"), ("exprot", "export")])
+def test_a_mistyped_command_is_suggested(typed, meant):
+    ran = run(typed)
+    assert ran.code == 2
+    assert f"did you mean {meant}" in ran.err
+
+
+def test_a_mistyped_phase_is_suggested(starter_store):
+    ran = run("show", "titanum nitride", store=starter_store)
+    assert ran.code == 2
+    assert "titanium nitride" in ran.err
+
+
+def test_in_a_terminal_headings_stand_out_and_the_width_is_used(starter_store, knife):
+    command = [sys.executable, "-m", "phasedb", "--store", str(starter_store), "match", str(knife)]
+    wide = in_terminal(command, columns=150)
+    assert "\x1b[1mRanking" in wide
+    assert max(len(re.sub(r"\x1b\[\d*m", "", line)) for line in wide.splitlines()) > 100
+    narrow = in_terminal(command, columns=80, NO_COLOR="1")
+    assert "\x1b[" not in narrow
+    assert max(map(len, narrow.splitlines())) <= 80
+
+
+def shell(name):
+    path = shutil.which(name)
+    if path is None:
+        pytest.skip(f"{name} is not installed here")
+    return path
+
+
+SHELLS = {
+    "bash": (["--norc", "-i"], 'eval "$(_PHASEDB_COMPLETE=bash_source phasedb)"'),
+    "zsh": (
+        ["-f", "-i"],
+        'autoload -U compinit; compinit -u -D; eval "$(_PHASEDB_COMPLETE=zsh_source phasedb)"',
+    ),
+    "fish": (["--no-config", "-i"], "_PHASEDB_COMPLETE=fish_source phasedb | source"),
+}
+
+
+@pytest.mark.parametrize("name", SHELLS)
+@pytest.mark.parametrize(
+    ("typed", "shown"),
+    [
+        ("phasedb dem", "demo"),
+        ("phasedb match x --intern", "--internal-standard"),
+        ("phasedb show lanthanum\\ hexa", "lanthanum\\ hexaboride"),
+        ("phasedb lines iron\\ \\(alp", "iron\\ \\(alpha,\\ ferrite\\)"),
+        ('phasedb refine x --phase "iron (alp', '"iron (alpha, ferrite)"'),
+    ],
+)
+def test_pressing_tab_in_a_real_shell(name, typed, shown, starter_store, tmp_path):
+    flags, setup = SHELLS[name]
+    here = os.path.dirname(sys.executable)
+    environment = {
+        **os.environ,
+        "PATH": here + os.pathsep + os.environ["PATH"],
+        "PHASEDB_STORE": str(starter_store),
+        "TERM": "xterm",
+        "HOME": str(tmp_path),
+    }
+    assert shown in type_and_tab([shell(name), *flags], setup, typed, environment)
