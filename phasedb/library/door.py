@@ -23,7 +23,7 @@ KX_WITHIN: Final = 3e-4
 """How near two values' ratio must come to the kX factor to be called a slip of unit."""
 
 _P = tables.phase.c
-_NAMED_AT_MOST: Final = 3
+NAMED_AT_MOST: Final = 3
 _CHANGES_THAT_COUNT: Final = (
     "formula",
     "lattice_type",
@@ -78,8 +78,8 @@ def nearness(a: float, esd: float | None, other: float, other_esd: float | None)
 def _neighbours(connection: Connection, prepared: Prepared, own_id: int | None) -> list[Warned]:
     content = prepared.content
     a, esd = content.a_angstrom, content.a_esd_angstrom
-    # the widest window that any of the two comparisons needs; the stored esd is looked at row by row
-    margin = max(KX_IN_ANGSTROM - 1 + KX_WITHIN, NEAR_ESDS * (esd or 0.0) / a + NEAR_RELATIVE) + 1e-3
+    # the widest window that any comparison needs, with stored esds up to 0.4 % of a
+    margin = NEAR_ESDS * (esd or 0.0) / a + 0.012
     query = sa.select(
         _P.id, _P.name, _P.a_angstrom, _P.a_esd_angstrom, _P.formula_key, _P.standing, _P.formula
     ).where(
@@ -100,16 +100,17 @@ def _neighbours(connection: Connection, prepared: Prepared, own_id: int | None) 
             found.append(Warned("kx", kx_text(content, row.name, difference)))
         elif abs(difference) <= limit:
             near.append((not same, abs(difference), difference, row))
-    near.sort(key=lambda item: (item[0], item[1], item[3].name))
-    for other, _, difference, row in near[:_NAMED_AT_MOST]:
-        found.append(
-            Warned(
-                "near", near_text(content, row.name, row.formula, row.a_angstrom, difference, same=not other)
-            )
-        )
-    if len(near) > _NAMED_AT_MOST:
-        found.append(Warned("near", f"{len(near) - _NAMED_AT_MOST} more entries lie as close"))
+    named = sorted(near, key=lambda item: (item[0], item[1], item[3].name))[:NAMED_AT_MOST]
+    for other, _, difference, row in named:
+        text = near_text(content, row.name, row.formula, row.a_angstrom, difference, same=not other)
+        found.append(Warned("near", text))
+    if len(near) > NAMED_AT_MOST:
+        found.append(more_near(len(near) - NAMED_AT_MOST))
     return found
+
+
+def more_near(count: int) -> Warned:
+    return Warned("near", f"{count} more {'entry lies' if count == 1 else 'entries lie'} as close")
 
 
 def _is_kx_apart(difference: float) -> bool:

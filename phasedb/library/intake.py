@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
-from typing import Final
+from collections.abc import Callable, Mapping
+from typing import Any, Final, TypeVar
 
 from phasedb.crystal.lattice import check_lattice_type
 from phasedb.crystal.phases import DRIFT_CLASSES, DriftClass
@@ -12,6 +12,8 @@ from phasedb.crystal.quantity import parse_lattice_constant, parse_measured
 from phasedb.errors import InputError
 from phasedb.library.entry import Draft
 from phasedb.library.sources import sources_from_fields
+
+_Value = TypeVar("_Value")
 
 REQUIRED_FIELDS: Final = ("name", "formula", "lattice_type", "a_angstrom")
 FIELD_ALIASES: Final = {
@@ -105,15 +107,16 @@ def draft_from_fields(given: Mapping[str, str | None]) -> Draft:
     except InputError as error:
         raise FieldError("a_angstrom", error) from None
     stated_esd = number("a_esd_angstrom")
-    drift = drift_class_from(fields["drift_class"]) if fields.get("drift_class") else None
     reason = fields.get("drift_reason", "")
-    if drift is None:
-        drift, reason = likely_drift_class(fields["formula"])
+    if fields.get("drift_class"):
+        drift = _field("drift_class", drift_class_from, fields["drift_class"])
+    else:
+        drift, reason = _field("formula", likely_drift_class, fields["formula"])
     return Draft(
         name=fields["name"],
         mineral_name=fields.get("mineral_name", ""),
         formula=fields["formula"],
-        lattice_type=check_lattice_type(fields["lattice_type"]),
+        lattice_type=_field("lattice_type", check_lattice_type, fields["lattice_type"]),
         a_angstrom=a.angstrom,
         a_esd_angstrom=a.esd_angstrom if stated_esd is None else stated_esd,
         a_text=a.text,
@@ -131,8 +134,18 @@ def draft_from_fields(given: Mapping[str, str | None]) -> Draft:
         remarks=fields.get("remarks", ""),
         aliases=_parts(fields.get("aliases", "")),
         tags=_parts(fields.get("tags", "")),
-        sources=sources_from_fields(fields, number, length),
+        sources=_field("source_kind", sources_from_fields, fields, number, length),
     )
+
+
+def _field(name: str, read: Callable[..., _Value], *given: Any) -> _Value:
+    """Return what `read` makes of a field; an error says which one it was."""
+    try:
+        return read(*given)
+    except FieldError:
+        raise
+    except InputError as error:
+        raise FieldError(name, error) from None
 
 
 def _parts(text: str) -> tuple[str, ...]:

@@ -10,12 +10,15 @@ from phasedb.errors import InputError
 from phasedb.library.cleaning import clean_text, within
 from phasedb.library.entry import SOURCE_KINDS, Source, SourceKind
 
+EXPANSION_SOURCE = "thermal expansion: "
+"""How the citation of a source begins that gives the thermal expansion and not a."""
+
 _YEAR_IN_BRACKETS = re.compile(r"\((1[89]\d\d|20\d\d)\)")
 _YEAR = re.compile(r"(?<![\d.])(1[89]\d\d|20\d\d)(?![\d]|\.\d)")
 _DOI = re.compile(r"\bdoi:\s*(10\.\d{4,9}/[^\s;,]+)", re.IGNORECASE)
 _JOURNAL = re.compile(
     r"\bet al\b|\bjournal\b|\bacta\b|\bphys|\bzeitschrift|\bmineral|\bchem|\bproceedings"
-    r"|\bnational bureau|\bfiat\b|\breview"
+    r"|\bamcsd entry|\bnational bureau|\bfiat\b|\breview"
 )
 
 
@@ -62,7 +65,7 @@ def kind_of_source(citation: str, how: str = "") -> SourceKind:
     if _JOURNAL.search(text):
         return "paper"
     if re.search(
-        r"package|\bpredefined\b|dabax|\.ini\b|prototype|data set|data table|web tables|\bcod\b", text
+        r"package|\bpredefined\b|dabax|\.ini\b|prototype|data set|data table|web tables|\bcod\b|\d\.\d+\.\d", text
     ):
         return "data package"
     return "paper"
@@ -124,5 +127,5 @@ def sources_from_fields(
             )
         )
     if fields.get("thermal_expansion_source"):
-        found.append(cited_source(f"thermal expansion: {fields['thermal_expansion_source']}"))
+        found.append(cited_source(EXPANSION_SOURCE + fields["thermal_expansion_source"]))
     return tuple(found)

@@ -39,6 +39,7 @@ class Writing:
         row = connection.execute(sa.select(tables.state).with_for_update()).one()
         self.phase_count: int = row.phase_count
         self.history_count: int = row.history_count
+        self._count_before = self.history_count
         self.history_head: str = row.history_head
         self._fingerprint = int(row.fingerprint, 16)
         self._pending: list[dict[str, Any]] = []
@@ -87,7 +88,12 @@ class Writing:
         self.phase_count += phases
 
     def finish(self) -> None:
-        """Write what is pending; called by the library just before the commit."""
+        """Write what is pending; called by the library just before the commit.
+
+        Without a history row nothing was changed, and the file keeps its bytes.
+        """
+        if self.history_count == self._count_before:
+            return
         self._flush()
         self.connection.execute(
             sa.update(tables.state).values(
