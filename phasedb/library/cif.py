@@ -154,8 +154,8 @@ def phase_of_block(block: Any) -> CifPhase:
     )
     drift, reason = likely_drift_class(formula.text)
     draft = Draft(
-        name=_one_line(common or mineral or formula.text),
-        mineral_name=_one_line(mineral),
+        name=_one_line(common or mineral or formula.text, 200),
+        mineral_name=_one_line(mineral, 200),
         formula=formula.text,
         lattice_type=lattice,
         a_angstrom=a,
@@ -180,8 +180,8 @@ def phase_of_block(block: Any) -> CifPhase:
     return CifPhase(str(block.name), draft, tuple(notes))
 
 
-def _one_line(text: str) -> str:
-    return " ".join(text.split())[:200]
+def _one_line(text: str, most: int = 2000) -> str:
+    return " ".join(text.split())[:most]
 
 
 def _measured(block: Any, *names: str) -> tuple[Measured, str] | None:
