@@ -308,7 +308,7 @@ def list_phases(
     from phasedb.cli.tables import aligned
 
     if entries:
-        for line in aligned(*showing.list_table(entries), right=(3,)):
+        for line in aligned(*showing.list_table(entries), right=(3,), shrink={0: 26, 1: 13, 4: 9}):
             click.echo(line)
     total = library.phase_count
     what = "withdrawn entries" if withdrawn else f"of {total} entries in use"

@@ -85,13 +85,13 @@ def backup(ctx: click.Context, file: Path, as_json: bool) -> None:
             {
                 "schema": "phasedb.backup/1",
                 "file": str(copied.path),
-                "entries": copied.audit.phase_count,
-                "history": {"count": copied.audit.history_count, "head": copied.audit.history_head},
+                "entries": copied.proof.phase_count,
+                "history": {"count": copied.proof.history_count, "head": copied.proof.history_head},
             }
         )
         return
-    click.echo(f"wrote {copied.path}: {copied.audit.phase_count} entries, proved whole")
-    click.echo(f"history  {copied.audit.history_count} rows, head {copied.audit.history_head}")
+    click.echo(f"wrote {copied.path}: {copied.proof.phase_count} entries, proved whole")
+    click.echo(f"history  {copied.proof.history_count} rows, head {copied.proof.history_head}")
     note("Keep the head outside the store: 'phasedb audit --expect HEAD' compares with it.")
 
 
@@ -119,13 +119,15 @@ def restore(ctx: click.Context, file: Path, replace: bool, as_json: bool) -> Non
                 "schema": "phasedb.restore/1",
                 "store": str(copied.path),
                 "kept_aside": None if copied.kept_aside is None else str(copied.kept_aside),
-                "entries": copied.audit.phase_count,
-                "history": {"count": copied.audit.history_count, "head": copied.audit.history_head},
+                "entries": copied.proof.phase_count,
+                "history": {"count": copied.proof.history_count, "head": copied.proof.history_head},
             }
         )
         return
-    click.echo(f"restored {copied.path}: {copied.audit.phase_count} entries, proved whole")
-    click.echo(f"history  {copied.audit.history_count} rows, head {copied.audit.history_head}")
+    click.echo(f"restored {copied.path}: {copied.proof.phase_count} entries, proved whole")
+    click.echo(f"history  {copied.proof.history_count} rows, head {copied.proof.history_head}")
+    if copied.proof.is_older:
+        note("It is of an older revision: run 'phasedb upgrade' before using it.")
     if copied.kept_aside is not None:
         click.echo(f"the store that was there is kept as {copied.kept_aside}")
 

@@ -6,7 +6,7 @@ import shutil
 import sys
 import textwrap
 import unicodedata
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 
 def text_width(text: str) -> int:
@@ -22,18 +22,41 @@ def page_width() -> int:
     return min(shutil.get_terminal_size((80, 24)).columns, 120) if sys.stdout.isatty() else 80
 
 
-def aligned(heads: Sequence[str], rows: Sequence[Sequence[str]], *, right: Sequence[int] = ()) -> list[str]:
-    """Return the lines of a table; columns in `right` are set flush right."""
+def aligned(
+    heads: Sequence[str],
+    rows: Sequence[Sequence[str]],
+    *,
+    right: Sequence[int] = (),
+    shrink: Mapping[int, int] | None = None,
+) -> list[str]:
+    """Return the lines of a table; columns in `right` are set flush right.
+
+    A table that is wider than the page has the columns in `shrink` wrapped at the widths given there: nothing
+    is cut off.
+    """
     table = [list(heads), *(list(row) for row in rows)]
     widths = [max(text_width(row[i]) for row in table) for i in range(len(heads))]
+    if sum(widths) + 2 * (len(widths) - 1) > page_width():
+        for i, most in (shrink or {}).items():
+            widths[i] = min(widths[i], most)
     lines = []
     for row in table:
-        cells = []
-        for i, cell in enumerate(row):
-            gap = " " * (widths[i] - text_width(cell))
-            cells.append(gap + cell if i in right else cell + gap)
-        lines.append("  ".join(cells).rstrip())
+        parts = [_wrapped(cell, width) for cell, width in zip(row, widths, strict=True)]
+        for number in range(max(len(cell) for cell in parts)):
+            cells = []
+            for i, cell in enumerate(parts):
+                text = cell[number] if number < len(cell) else ""
+                gap = " " * (widths[i] - text_width(text))
+                cells.append(gap + text if i in right else text + gap)
+            lines.append("  ".join(cells).rstrip())
     return lines
+
+
+def _wrapped(cell: str, width: int) -> list[str]:
+    """Return a cell as lines; those after the first are set in by two."""
+    if text_width(cell) <= width:
+        return [cell]
+    return textwrap.wrap(cell, width, subsequent_indent="  ", break_on_hyphens=False) or [""]
 
 
 def labelled(pairs: Sequence[tuple[str, str]], *, indent: int = 0) -> list[str]:

@@ -13,13 +13,31 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+import sqlalchemy as sa
+
 from phasedb.errors import RuleRefusedError, StoreError
-from phasedb.library import connect
-from phasedb.library.audit import Audit, audit
+from phasedb.library import connect, tables
+from phasedb.library.audit import audit
 from phasedb.library.making import put_in_place, sync_folder
+from phasedb.library.store import revision_of
 
 if TYPE_CHECKING:
     from phasedb.library.store import Library
+
+
+@dataclass(frozen=True, slots=True)
+class Proof:
+    """What a copy that passed the audit holds."""
+
+    revision: str
+    phase_count: int
+    history_count: int
+    history_head: str
+
+    @property
+    def is_older(self) -> bool:
+        """Whether it has to be upgraded before it can be used."""
+        return self.revision != tables.REVISIONS[-1]
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,7 +45,7 @@ class Copied:
     """A proved copy: where it lies, what it holds, and where the replaced store was put (None: none was)."""
 
     path: Path
-    audit: Audit
+    proof: Proof
     kept_aside: Path | None = None
 
 
@@ -84,15 +102,22 @@ def copy_database(source: Path, target: Path) -> None:
         read.close()
 
 
-def proved(path: Path, *, library_class: type[Library], called: str) -> Audit:
-    """Return the audit of a copy.
+def proved(path: Path, *, library_class: type[Library], called: str) -> Proof:
+    """Return the proof of a copy; one of an older revision is proved through an upgrade in memory.
 
     Raises
     ------
     StoreError
-        If it is not whole.
+        If it is not whole, not a library, or made by a newer program.
     """
-    with library_class.open(str(path)) as copy:
+    engine = connect.open_engine(str(path), write=False)
+    try:
+        with connect.store_errors(called), engine.connect() as connection:
+            revision = revision_of(connection, called)
+            state = connection.execute(sa.select(tables.state)).one()
+    finally:
+        engine.dispose()
+    with connect.store_errors(called), _current(path, revision, library_class) as copy:
         found = audit(copy)
     if found.faults:
         raise StoreError(
@@ -101,7 +126,17 @@ def proved(path: Path, *, library_class: type[Library], called: str) -> Audit:
             where=called,
             hint="run 'phasedb audit'; nothing was written",
         )
-    return found
+    return Proof(revision, found.phase_count, state.history_count, state.history_head)
+
+
+def _current(path: Path, revision: str, library_class: type[Library]) -> Library:
+    if revision not in tables.REVISIONS[:-1]:
+        return library_class.open(str(path))  # refuses what a newer program made
+    from phasedb.library.people import acting
+    from phasedb.library.upgrading import upgraded_in_memory
+
+    engine, _ = upgraded_in_memory(path, acting(None))
+    return library_class(engine, str(path))
 
 
 def backup(place: str, target: Path, *, library_class: type[Library]) -> Copied:

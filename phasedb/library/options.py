@@ -109,6 +109,16 @@ def _new_sources(said: dict[str, Any], draft: Draft, old: Draft) -> tuple[Any, .
     return (*first, *old.sources[1:])
 
 
+def _limit(text: str | None, option: str) -> float | None:
+    """Return a limit of a in Å; 0 is no limit."""
+    if text is None or text.strip() == "0":
+        return None
+    try:
+        return parse_lattice_constant(text).angstrom
+    except InputError as error:
+        raise InputError(error.what, where=option, hint=error.hint) from None
+
+
 def filters_from_options(
     elements: Sequence[str],
     lattice: str | None,
@@ -131,8 +141,8 @@ def filters_from_options(
     return {
         "elements": [element(symbol).symbol for symbol in symbols],
         "lattice": None if lattice is None else check_lattice_type(lattice),
-        "a_min": None if a_min is None else parse_lattice_constant(a_min, what="--a-min").angstrom,
-        "a_max": None if a_max is None else parse_lattice_constant(a_max, what="--a-max").angstrom,
+        "a_min": _limit(a_min, "--a-min"),
+        "a_max": _limit(a_max, "--a-max"),
         "structure": None if structure is None else canonical_type(structure),
         "text": text or None,
     }

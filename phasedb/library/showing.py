@@ -234,7 +234,7 @@ def list_table(entries: Sequence[Entry]) -> tuple[list[str], list[list[str]]]:
         ]
         for entry in entries
     ]
-    return ["name", "formula", "lattice", "a (Å)", "type", "standing"], rows
+    return ["name", "formula", "lat", "a (Å)", "type", "standing"], rows
 
 
 # --- history --------------------------------------------------------------------------------------

@@ -155,15 +155,24 @@ def _rehearse(place: str, person: Person) -> dict[str, int]:
     """Run the upgrade on a copy in memory, to say beforehand whether it would work."""
     if connect.is_url(place):
         return {}
+    engine, rows = upgraded_in_memory(Path(place), person)
+    engine.dispose()
+    return rows
+
+
+def upgraded_in_memory(path: Path, person: Person) -> tuple[Engine, dict[str, int]]:
+    """Return an upgraded copy in memory of an older store, and how many rows each table has."""
     from sqlalchemy.pool import StaticPool
 
-    source = connect.open_sqlite(Path(place), write=False)
+    source = connect.open_sqlite(path, write=False)
     memory = sqlite3.connect(":memory:", isolation_level=None, check_same_thread=False)
     source.backup(memory)
     source.close()
     engine = sa.create_engine("sqlite://", creator=lambda: memory, poolclass=StaticPool)
     try:
         with engine.begin() as connection:
-            return _revise(connection, person, revision_of(connection, place))
-    finally:
+            rows = _revise(connection, person, revision_of(connection, str(path)))
+    except BaseException:
         engine.dispose()
+        raise
+    return engine, rows

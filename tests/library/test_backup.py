@@ -34,7 +34,7 @@ def test_a_backup_is_the_same_store(starter, tmp_path):
     assert _dump(copied.path) == _dump(starter)
     assert os.listdir(copied.path.parent) == ["copy.sqlite"]
     with Library.open(copied.path) as library:
-        assert copied.audit.history_head == library.history_head
+        assert copied.proof.history_head == library.history_head
 
 
 def test_a_backup_while_another_is_in_the_middle_of_a_write(starter, tmp_path):
