@@ -8,7 +8,7 @@ from functools import lru_cache
 from typing import Final
 
 from phasedb.crystal.lattice import check_lattice_type
-from phasedb.crystal.phases import DRIFT_CLASSES
+from phasedb.crystal.phases import DRIFT_CLASSES, Structure
 from phasedb.errors import InputError
 from phasedb.library.cleaning import clean_name, clean_text, within
 from phasedb.library.entry import Draft, Entry, key_of
@@ -119,17 +119,12 @@ def canonical_type(text: str | None) -> str | None:
 
 def _with_sites(content: Draft) -> tuple[Draft, str]:
     """Return the content with the sites of its structure type, and what is wrong with the type (or "")."""
-    if content.structure_type is None:
-        return content, ""
     from phasedb.crystal.structure import check_structure
-    from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
 
-    if resolve_structure_type(content.structure_type) is None:
-        return content, ""
     try:
-        structure = structure_from_type(
-            content.structure_type, content.formula, free_parameters=content.free_parameters or None
-        )
+        structure = _structure_of(content)
+        if structure is None:
+            return content, ""
         check_structure(structure, content.lattice_type)
     except InputError as error:
         return replace(content, sites=(), assumed=()), str(error)
@@ -137,6 +132,21 @@ def _with_sites(content: Draft) -> tuple[Draft, str]:
         replace(content, sites=structure.sites, assumed=structure.assumed, space_group=structure.space_group),
         "",
     )
+
+
+def _structure_of(content: Draft) -> Structure | None:
+    """Return the structure that a known type gives, or space group and sites of an own type; else None."""
+    from phasedb.crystal.own_type import is_complete, structure_from_sites
+    from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
+
+    given = content.free_parameters
+    if content.structure_type is None:
+        return None
+    if resolve_structure_type(content.structure_type) is not None:
+        return structure_from_type(content.structure_type, content.formula, free_parameters=given or None)
+    if content.space_group and is_complete(given, content.formula):
+        return structure_from_sites(content.space_group, given, content.formula)
+    return None
 
 
 def entry_of(prepared: Prepared, *, uid: str, by: str, at: str) -> Entry:
