@@ -346,5 +346,9 @@ def history(ctx: click.Context, name: str | None, as_json: bool) -> None:
     if as_json:
         print_json(showing.history_document(rows))
         return
-    for line in showing.history_lines(library, rows, in_full=name is not None):
+    from phasedb.cli.tables import labelled
+
+    for line, details in showing.history_sections(rows, in_full=name is not None):
         click.echo(line)
+        for detail in labelled(details, indent=7):
+            click.echo(detail)

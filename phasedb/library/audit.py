@@ -117,6 +117,7 @@ def _check_contents(connection: Connection, found: Audit, expected: str | None) 
     replayed = _check_history(connection, found, expected, wanted)
     live = _check_entries(connection, found, replayed)
     _check_state(connection, found, live)
+    _check_aliases(connection, found)
     _check_cache(connection, found)
     _check_records(connection, found, replayed)
     _check_identifications(connection, found, replayed)
@@ -279,6 +280,12 @@ def _check_state(connection: Connection, found: Audit, live: list[str]) -> None:
         )
     if state.history_head != found.history_head:
         found.faults.append("the state's history head is not that of the last history row")
+
+
+def _check_aliases(connection: Connection, found: Audit) -> None:
+    for row in connection.execute(sa.select(tables.alias)):
+        if key_of(row.alias) != row.alias_key:
+            found.faults.append(f"alias {row.alias!r} is filed under another name ({row.alias_key!r})")
 
 
 def _check_cache(connection: Connection, found: Audit) -> None:

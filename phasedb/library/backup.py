@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import os
+import shutil
 import sqlite3
 import uuid
 from collections.abc import Iterator
@@ -60,7 +61,7 @@ def _file_of(place: str) -> Path:
             "a store on a server is backed up and restored with the server's own tools",
             where=connect.hidden_password(place),
         )
-    return Path(place)
+    return Path(place).resolve()  # a link stays a link to the store
 
 
 @contextmanager
@@ -190,6 +191,7 @@ def restore(place: str, copy: Path, *, replace: bool, library_class: type[Librar
             put_in_place(beside, path)
             return Copied(path, found)
         aside = path.with_name(f"{path.name}.{stamp()}.replaced")
+        shutil.copymode(path, beside)
         with beside.open("rb+") as stream:
             os.fsync(stream.fileno())
         with _nobody_writing(path):
@@ -224,8 +226,6 @@ def _swap(beside: Path, path: Path, aside: Path) -> None:
         except FileExistsError:
             raise
         except OSError:  # no hard links here: a copy does as well
-            import shutil
-
             shutil.copy2(path, aside)
         # A journal that SQLite could not undo belongs to the old store and must never meet the new one.
         journal = Path(f"{path}-journal")

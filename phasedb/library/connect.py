@@ -8,7 +8,6 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
-from urllib.parse import quote
 
 from phasedb.errors import StoreError
 
@@ -84,7 +83,7 @@ def check_file(path: Path) -> None:
 
 def _recover(path: Path) -> None:
     """Let SQLite undo a write that was cut off; a read-only connection could not."""
-    if not Path(f"{path}-journal").exists() or not os.access(path, os.W_OK):
+    if not Path(f"{path.resolve()}-journal").exists() or not os.access(path, os.W_OK):
         return
     connection = sqlite3.connect(path, timeout=BUSY_SECONDS)
     try:
@@ -94,7 +93,7 @@ def _recover(path: Path) -> None:
 
 
 def sqlite_uri(path: Path, mode: str) -> str:
-    return f"file:{quote(str(path.absolute()))}?mode={mode}"
+    return f"{path.absolute().as_uri()}?mode={mode}"
 
 
 def open_sqlite(path: Path, *, write: bool) -> sqlite3.Connection:

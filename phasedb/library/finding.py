@@ -12,7 +12,7 @@ from phasedb.crystal.lattice import LatticeType
 from phasedb.errors import UnknownNameError
 from phasedb.library import mapping, tables
 from phasedb.library.chain import HistoryRow
-from phasedb.library.entry import Entry, key_of
+from phasedb.library.entry import Entry, canonical_json, key_of
 
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection
@@ -161,4 +161,23 @@ def _key_of_name(connection: Connection, name: str) -> Any:
     ).scalar()
     if found is not None and id_of_name(connection, name) is None:
         return found
-    return find_entry(connection, name)[1].uid
+    try:
+        return find_entry(connection, name)[1].uid
+    except UnknownNameError:
+        earlier = _key_of_earlier_name(connection, name)
+        if earlier is None:
+            raise
+        return earlier
+
+
+def _key_of_earlier_name(connection: Connection, name: str) -> str | None:
+    """Return the uid of the entry that once had that name (as it was written)."""
+    history = tables.history.c
+    written = f'"name":{canonical_json(" ".join(name.split()))}'
+    found = connection.execute(
+        sa.select(history.key)
+        .where(history.kind == "phase", history.after.contains(written, autoescape=True))
+        .order_by(history.number.desc())
+        .limit(1)
+    )
+    return found.scalar()

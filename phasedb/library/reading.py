@@ -23,6 +23,7 @@ METHOD: Final = 1
 """Which way of computing line strengths a cached value came from; raise it when the computation changes."""
 
 _NO_LINES: Final[Lines] = (np.zeros(0, dtype=np.int32), np.zeros(0, dtype=np.float64))
+_IDS_AT_ONCE: Final = 500  # well below the variable limit of any SQLite in use
 _LATTICE_CODE: Final = {name: code for code, name in enumerate(LATTICE_TYPES)}
 _DRIFT_CODE: Final = {name: code for code, name in enumerate(DRIFT_CLASSES)}
 
@@ -90,11 +91,17 @@ def read_within(
     )
     if not found or limit <= 0:
         return _table(connection, []), found
-    distance: sa.ColumnElement[Any] = (
-        _P.a_angstrom if centre is None else sa.func.abs(_P.a_angstrom - float(centre))
-    )
-    query = _SELECT.where(window).order_by(distance, _P.name_key).limit(limit)
-    return _table(connection, connection.execute(query).all()), found
+    # The index alone answers which rows are nearest; only those are then read in full.
+    start = float(a_low if centre is None else centre)
+    distance = sa.func.abs(_P.a_angstrom - start)
+    nearest = sa.select(distance).where(window).order_by(distance).limit(limit).subquery()
+    furthest = connection.execute(sa.select(sa.func.max(nearest.c[0]))).scalar_one()
+    ids = connection.execute(sa.select(_P.id).where(window, distance <= furthest)).scalars().all()
+    rows: list[Any] = []
+    for begin in range(0, len(ids), _IDS_AT_ONCE):
+        rows += connection.execute(_SELECT.where(_P.id.in_(ids[begin : begin + _IDS_AT_ONCE]))).all()
+    rows.sort(key=lambda row: (abs(row.a_angstrom - start), str(row.name_key)))
+    return _table(connection, rows[:limit]), found
 
 
 def _numbers(rows: Sequence[Any], name: str) -> NDArray[np.float64]:
@@ -176,8 +183,8 @@ def _cached(row: Any) -> Lines | None:
 
 def _compute(connection: Connection, ids: list[int]) -> dict[int, Lines | None]:
     found: dict[int, Lines | None] = {}
-    for start in range(0, len(ids), 500):
-        chosen = _P.id.in_(ids[start : start + 500])
+    for start in range(0, len(ids), _IDS_AT_ONCE):
+        chosen = _P.id.in_(ids[start : start + _IDS_AT_ONCE])
         for phase_id, entry in mapping.load_entries(connection, chosen).items():
             found[phase_id] = lines_of(entry.phase())
     return found

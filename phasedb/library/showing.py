@@ -270,24 +270,21 @@ def history_document(rows: Sequence[HistoryRow]) -> dict[str, Any]:
     }
 
 
-def history_lines(library: Library, rows: Sequence[HistoryRow], *, in_full: bool) -> list[str]:
-    """Return the history as a log: one line for each row, with what changed below it if `in_full`."""
-    from phasedb.cli.tables import labelled
-
-    lines = []
+def history_sections(rows: Sequence[HistoryRow], *, in_full: bool) -> list[tuple[str, Pairs]]:
+    """Return the history as a log: a line for each row, with why, and what changed if `in_full`."""
+    sections = []
     for row in rows:
         before, after = _parsed(row.before), _parsed(row.after)
         subject = _subject(after or before or {})
         what = f"{row.action} {row.kind}" + (f" {subject!r}" if subject else "")
-        lines.append(f"{row.number:>5}  {when(row.at)}  {row.who}  {what}")
         details: Pairs = []
         if in_full:
             details.append(("on", f"{row.host}, login {row.login}, hash {row.hash[:16]}"))
             details += _details(before, after)
         if row.remark:
             details.append(("why", row.remark))
-        lines += labelled(details, indent=7)
-    return lines
+        sections.append((f"{row.number:>5}  {when(row.at)}  {row.who}  {what}", details))
+    return sections
 
 
 def _subject(document: dict[str, Any]) -> str:

@@ -111,6 +111,7 @@ def test_dropped_triggers_are_missed(busy):
         ("UPDATE site SET x = 0.25 WHERE phase_id = 4", "'copper'"),
         ("DELETE FROM tag WHERE phase_id = 4", "'copper'"),
         ("INSERT INTO alias VALUES ('kupfer', 4, 'Kupfer')", "'copper'"),
+        ("INSERT INTO alias VALUES ('kupfer', 4, 'Messing')", "alias 'Messing' is filed under"),
         ("DELETE FROM phase WHERE name = 'copper'", "'copper' of the history is not in the store"),
         ("UPDATE state SET phase_count = 1", "counts 1 entries"),
         ("UPDATE state SET fingerprint = '00'", "fingerprint"),
