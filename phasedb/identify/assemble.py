@@ -221,7 +221,7 @@ class Assembler:
             a_fitted_angstrom=a_fitted,
             a_fitted_esd_angstrom=a_fitted * reading.ln_a_esd,
             relative_shift=a_fitted / stored - 1.0,
-            lines_claimed=int(np.count_nonzero(claims > CLAIMED)),
+            lines_claimed=len(n),
             lines_expected=float(fit.batch.expected[fit.row, place]),
             absences="structure" if entries.has_structure(index) else "lattice",
             merit_f=f,
@@ -329,7 +329,7 @@ class Assembler:
             a_angstrom=a,
             a_esd_angstrom=a * self._reading(fit, place).ln_a_esd,
             nearest=self._nearest(lattice, ln_a),
-            lines_claimed=int(np.count_nonzero(fit.batch.claims[fit.row, place].sum(axis=1) > CLAIMED)),
+            lines_claimed=len(n),
             merit_f=f,
             merit_m=m,
         )

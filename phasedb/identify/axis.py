@@ -36,12 +36,16 @@ KIND_LINE, KIND_ALPHA2, KIND_BETA, KIND_TUNGSTEN = 0, 1, 2, 3
 
 @dataclass(frozen=True, slots=True)
 class Ghost:
-    """An optional further line of every strong line: wavelength ratio, frequency, relative height."""
+    """An optional further line of every strong line.
+
+    How often a list shows such lines at all, and their height relative to the parent's line (and its spread in ln).
+    """
 
     kind: int
     wavelength_ratio: float
     frequency: float
     height: float
+    height_spread: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -156,11 +160,11 @@ def _ghosts(radiation: Radiation | None) -> tuple[Ghost, ...]:
     lines = EMISSION_LINES[radiation.anode]
     base = radiation.wavelength_angstrom
     found = [
-        Ghost(KIND_BETA, lines.beta / base, 0.10, 0.02),
-        Ghost(KIND_TUNGSTEN, W_L_ALPHA1_ANGSTROM / base, 0.05, 0.02),
+        Ghost(KIND_BETA, lines.beta / base, 0.08, 0.03, 1.2),
+        Ghost(KIND_TUNGSTEN, W_L_ALPHA1_ANGSTROM / base, 0.04, 0.02, 1.0),
     ]
     if radiation.convention in ("doublet", "literal") and abs(base / lines.alpha1 - 1.0) < 2e-4:
-        found.append(Ghost(KIND_ALPHA2, lines.alpha2 / base, 0.15, 0.5))
+        found.append(Ghost(KIND_ALPHA2, lines.alpha2 / base, 0.10, 0.5, 0.25))
     return tuple(found)
 
 

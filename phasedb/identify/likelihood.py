@@ -45,6 +45,8 @@ SET_SHARES_AT: Final = (0, 1, 3, 5)
 FIND_NEIGHBOURS_AT: Final = (0, 2, 3, 5)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
+GHOST_PRIOR_LINES: Final = 1.5  # weight of the usual frequency of ghosts, in lines
+GHOST_LIST_PRIOR: Final = -2.0  # ln chance that a list shows a kind of ghost throughout
 N_SHIFT: Final = 3  # shift terms: zero, displacement, doublet
 
 
@@ -165,6 +167,11 @@ class _Fit:
         self.ln_share = np.full((self.n_sets, self.m), start)
         self.rate = np.full(self.n_sets, max(1.0, self.n / 4.0))
         self.use_heights = False
+        # of each kind of ghost (column = kind): the chance that its lines show, and ln height against the usual
+        self.activity = np.ones((self.n_sets, 4))
+        self.ghost_height = np.zeros((self.n_sets, 4))
+        for ghost in axis.ghosts:
+            self.activity[:, ghost.kind] = ghost.frequency
         self.x_line = np.empty((0, 0, 0))
 
     def subset(self, pool: Pool, rows: IntArray) -> _Fit:
@@ -173,6 +180,8 @@ class _Fit:
         part.ln_share = self.ln_share[rows]
         part.rate = self.rate[rows]
         part.use_heights = self.use_heights
+        part.activity = self.activity[rows]
+        part.ghost_height = self.ghost_height[rows]
         return part
 
     def iterate(self, first: int, last: int) -> None:
@@ -185,13 +194,16 @@ class _Fit:
             self.respond()
             if iteration in SET_SHARES_AT:
                 self.update_shares()
+                if self.axis.ghosts:
+                    self.update_ghosts()
                 self.respond()
             self.step()
 
     def rough_evidence(self) -> FloatArray:
         """Return log evidence up to terms that hardly differ between sets of one size."""
         inside = self.in_range()
-        p = self.chance_seen(self.ln_share[..., None], self.height, self.frequency * inside)
+        active, level = self.shown(self.kind)
+        p = active * self.chance_seen(self.ln_share[..., None], self.height + level, self.frequency * inside)
         drift = log_student(self.drift(), np.maximum(self.scale, 1e-12), DRIFT_TAIL) + np.log(
             np.maximum(self.scale, 1e-12)
         )
@@ -226,7 +238,8 @@ class _Fit:
         self.near_half = gather(self.half)
         self.near_height = gather(self.height)
         self.near_frequency = gather(self.frequency)
-        self.near_plain = gather(self.kind == KIND_LINE) > 0
+        self.near_kind = gather(self.kind).astype(np.int64)
+        self.near_plain = self.near_kind == KIND_LINE
         self.place_neighbours()
         self.neighbour_ok &= self.near_x < FAR
 
@@ -248,6 +261,48 @@ class _Fit:
         ratio = np.clip(ln_share + height - self.floor, -40.0, 40.0)
         return np.asarray(MOST_CERTAIN * frequency / (1.0 + np.exp(-slope * ratio)))
 
+    def shown(self, kind: NDArray[np.integer]) -> tuple[FloatArray, FloatArray]:
+        """Return, for lines of some kinds (set first), the chance that the list shows them and their ln height."""
+        row = np.arange(self.n_sets).reshape((-1,) + (1,) * (kind.ndim - 1))
+        return self.activity[row, kind], self.ghost_height[row, kind]
+
+    def update_ghosts(self) -> None:
+        """Learn from the lines claimed as ghosts how often, and how high, this list shows each kind."""
+        inside = self.in_range()
+        for ghost in self.axis.ghosts:
+            of_kind = self.kind == ghost.kind
+            if not of_kind.any():
+                continue
+            level = self.ghost_height[:, ghost.kind]
+            p = self.chance_seen(
+                self.ln_share[..., None], self.height + level[:, None, None], self.frequency * inside
+            )
+            visible = (p * of_kind).sum(axis=(1, 2)) / MOST_CERTAIN
+            claims = np.where(self.near_kind == ghost.kind, self.claims, 0.0)
+            seen = claims.sum(axis=(1, 2, 3))
+            prior = GHOST_PRIOR_LINES
+            share = (seen + prior * ghost.frequency) / (visible + prior)
+            self.activity[:, ghost.kind] = np.clip(share, 0.01, 0.95)
+            if self.axis.ln_intensity is not None:
+                gap = self.axis.ln_intensity[None, None, :, None] - self.ln_share[:, :, None, None]
+                gap = np.where(np.isfinite(self.near_height), gap - self.near_height, 0.0)
+                weight = 1.0 / HEIGHT_SPREAD[0] ** 2
+                total = (claims * gap).sum(axis=(1, 2, 3)) * weight
+                moved = total / (seen * weight + 1.0 / ghost.height_spread**2)
+                self.ghost_height[:, ghost.kind] = np.clip(moved, -2.5, 2.5)
+
+    def ghost_prior(self) -> FloatArray:
+        """Return the log prior density of the ghosts' activity (beta) and height (n_sets,), relative to none."""
+        value = np.zeros(self.n_sets)
+        for ghost in self.axis.ghosts:
+            base = np.clip(ghost.frequency, 0.01, 0.95)
+            active = self.activity[:, ghost.kind]
+            a, b = GHOST_PRIOR_LINES * base, GHOST_PRIOR_LINES * (1.0 - base)
+            value += np.minimum(a * np.log(active / base) + b * np.log((1 - active) / (1 - base)), 0.0)
+            value += np.where(active > 0.4, GHOST_LIST_PRIOR, 0.0)
+            value -= 0.5 * (self.ghost_height[:, ghost.kind] / ghost.height_spread) ** 2
+        return value
+
     def in_range(self) -> BoolArray:
         """Return which predicted lines the measurement could have shown."""
         inside = (self.x_line >= self.axis.low) & (self.x_line <= self.axis.high)
@@ -268,9 +323,11 @@ class _Fit:
         reach = np.where(
             (self.near_x < axis.low - 3.0 * sigma) | (self.near_x > axis.high + 3.0 * sigma), 0.0, 1.0
         )
-        p = self.chance_seen(self.ln_share[:, :, None, None], self.near_height, self.near_frequency)
+        active, level = self.shown(self.near_kind)
+        near_height = self.near_height + level
+        p = active * self.chance_seen(self.ln_share[:, :, None, None], near_height, self.near_frequency)
         odds = np.where(self.neighbour_ok, p / (1.0 - p), 0.0) * reach
-        density = density * self._height_ratio(self.near_height, self.near_plain)
+        density = density * self._height_ratio(near_height, self.near_plain)
         claim = odds * density
         others = self.rate[:, None, None] / axis.span + claim.sum(axis=(1, 3))[:, None, :]
         claim = self._one_to_one(claim, others)
@@ -454,8 +511,9 @@ class _Fit:
             centre = self.centre_shares()
             steps = centre[..., None] + SHARE_STEPS
             cell = np.log(float(SHARE_STEPS[1] - SHARE_STEPS[0]) / SHARE_RANGE)
-        p = self.chance_seen(
-            steps[..., None], self.height[:, :, None, :], (self.frequency * inside)[:, :, None, :]
+        active, level = self.shown(self.kind)
+        p = active[:, :, None] * self.chance_seen(
+            steps[..., None], (self.height + level)[:, :, None, :], (self.frequency * inside)[:, :, None, :]
         )
         value = np.log1p(-p).sum(axis=3)
         near_p = self.chance_seen(
@@ -484,7 +542,8 @@ class _Fit:
         share_term = self.set_shares()
         self.respond()
         inside = self.in_range()
-        p = self.chance_seen(self.ln_share[..., None], self.height, self.frequency * inside)
+        active, level = self.shown(self.kind)
+        p = active * self.chance_seen(self.ln_share[..., None], self.height + level, self.frequency * inside)
         unseen = np.log1p(-p).sum(axis=(1, 2))
         rates = BACKGROUND[None, :, None] / axis.span
         levels = np.log(rates + self.explained[:, None, :]).sum(axis=2) - BACKGROUND + BACKGROUND_LN_PRIOR
@@ -506,6 +565,7 @@ class _Fit:
         prior += -0.5 * noise**2 - np.log(axis.noise_spread) - 0.5 * LN_2PI
         laplace = 0.5 * (N_SHIFT + 1 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
         evidence = log_likelihood + prior + laplace + share_term.sum(axis=1) + self.ln_odds
+        evidence += self.ghost_prior()
         plain = p * (self.kind == KIND_LINE)
         return Evaluated(
             log_evidence=evidence,

@@ -12,14 +12,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from phasedb.crystal.lattice import LatticeType, allowed_n, multiplicity
-from phasedb.identify.axis import KIND_ALPHA2, Axis
+from phasedb.identify.axis import KIND_ALPHA2, KIND_BETA, KIND_TUNGSTEN, Axis
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 MOST_LINES_OF_A_PHASE: Final = 64
 WEAKEST_LINE: Final = 2e-3  # of the strongest in range: below any list's floor
-GHOST_PARENT: Final = 0.3  # ghosts are looked for beside lines at least this strong
+GHOST_PARENT: Final = {KIND_ALPHA2: 0.04, KIND_BETA: 0.15, KIND_TUNGSTEN: 0.25}  # least height of a parent
 EDGE_REACH: Final = 0.03  # ln a: how far a candidate may move; lines that could enter the range are kept
 
 
@@ -32,7 +32,7 @@ class LineTable:
     n : (n_candidates, n_lines) int64, N = h²+k²+l² (0 pads)
     half_ln_n : (n_candidates, n_lines), ½ ln N + ln(wavelength ratio); ascending (+inf pads)
     ln_height : (n_candidates, n_lines), ln of the height relative to the strongest line in range (-inf pads)
-    frequency : (n_candidates, n_lines), how often such a line is shown at all: 1, less for ghosts
+    frequency : (n_candidates, n_lines), 1 for a line (0 pads)
     kind : (n_candidates, n_lines) int8
     """
 
@@ -187,11 +187,11 @@ def _with_ghosts(axis: Axis, table: LineTable) -> LineTable:
     n, half, heights = [table.n], [table.half_ln_n], [height]
     frequency, kind = [table.frequency], [table.kind]
     for ghost in axis.ghosts:
-        parent = height >= GHOST_PARENT * (0.5 if ghost.kind == KIND_ALPHA2 else 1.0)
+        parent = height >= GHOST_PARENT[ghost.kind]
         n.append(table.n)
         half.append(np.where(parent, table.half_ln_n + np.log(ghost.wavelength_ratio), np.inf))
         heights.append(np.where(parent, height * ghost.height, 0.0))
-        frequency.append(np.where(parent, ghost.frequency, 0.0))
+        frequency.append(np.where(parent, 1.0, 0.0))
         kind.append(np.full(height.shape, ghost.kind, dtype=np.int8))
     return _sorted_table(
         np.concatenate(n, axis=1),
