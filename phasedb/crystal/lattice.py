@@ -76,7 +76,7 @@ def family_multiplicity(h: int, k: int, l: int) -> int:
     signs = 2 ** sum(value != 0 for value in values)
     distinct = len(set(values))
     orders = {1: 1, 2: 3, 3: 6}[distinct]
-    return signs * orders
+    return int(signs * orders)
 
 
 @lru_cache(maxsize=64)

@@ -151,6 +151,6 @@ class PhaseTable:
             elements=tuple(row.elements for row in rows),
             is_starter=np.array(["starter" in row.tags for row in rows], dtype=np.bool_),
             line_start=np.concatenate([[0], np.cumsum(counts)]).astype(np.int64),
-            line_n=np.concatenate([entry[0] for entry in known] or [[]]).astype(np.int32),
-            line_strength=np.concatenate([entry[1] for entry in known] or [[]]).astype(np.float64),
+            line_n=np.concatenate([np.array([], dtype=np.int32), *(entry[0] for entry in known)]),
+            line_strength=np.concatenate([np.array([]), *(entry[1] for entry in known)]),
         )
