@@ -12,6 +12,7 @@ from phasedb.errors import ExitCode, RuleRefusedError, StoreError
 from phasedb.library import Library
 from phasedb.library.audit import audit
 from phasedb.library.backup import backup, restore
+from phasedb.library.making import put_in_place
 
 
 def _dump(path) -> str:
@@ -123,8 +124,9 @@ def test_a_leftover_journal_never_meets_the_restored_store(starter, tmp_path):
     journal = Path(f"{starter}-journal")
     Path(starter).write_bytes(b"ruined")
     journal.write_bytes(b"\xd9\xd5\x05\xf9\x20\xa1\x63\xd7" + b"\x00" * 600)
-    _restore(starter, copied.path, replace=True)
+    done = _restore(starter, copied.path, replace=True)
     assert not journal.exists()
+    assert Path(f"{done.kept_aside}-journal").exists()
     assert _dump(starter) == _dump(copied.path)
 
 
@@ -141,6 +143,15 @@ def test_restore_waits_for_a_write_and_then_gives_up(starter, tmp_path, monkeypa
     finally:
         other.close()
     assert _dump(starter) == _dump(copied.path)
+
+
+def test_a_store_that_appears_in_the_meantime_is_not_overwritten(tmp_path):
+    finished, place = tmp_path / "finished", tmp_path / "library.sqlite"
+    finished.write_text("new")
+    place.write_text("somebody else's")
+    with pytest.raises(RuleRefusedError):
+        put_in_place(finished, place)
+    assert place.read_text() == "somebody else's"
 
 
 def test_the_store_itself_is_no_backup_of_it(starter):

@@ -164,6 +164,17 @@ def test_an_upgrade_that_fails_half_way_leaves_the_store_as_it_was(old):
     assert _dump(old) == before
 
 
+def test_an_upgrade_that_would_give_another_schema_is_undone(old):
+    connection = sqlite3.connect(old)
+    connection.execute("DROP INDEX ix_alias_phase_id")
+    connection.commit()
+    connection.close()
+    before = _dump(old)
+    with pytest.raises(StoreError, match="ix_alias_phase_id"):
+        upgrade(old)
+    assert _dump(old) == before
+
+
 def test_a_newer_store_is_refused(starter):
     connection = sqlite3.connect(starter)
     connection.execute("UPDATE alembic_version SET version_num = '0999'")
