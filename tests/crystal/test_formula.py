@@ -119,3 +119,19 @@ def test_molar_mass_agrees_with_an_independent_library(counts):
         assert parse_formula(text).molar_mass_g_mol == pytest.approx(
             periodictable.formula(text).mass, rel=2e-5
         )
+
+
+@given(
+    st.lists(
+        st.tuples(st.sampled_from(sorted(ELEMENTS)), st.sampled_from(["", "1", "2", "7", "12", "100"])),
+        min_size=1,
+        max_size=6,
+    )
+)
+def test_plain_formulas_read_the_same_as_through_the_whole_grammar(units: list[tuple[str, str]]) -> None:
+    text = "".join(symbol + count for symbol, count in units)
+    plain, grammar = parse_formula(text), parse_formula(f"({text})")
+    assert plain.composition == grammar.composition
+    assert list(plain.composition) == list(grammar.composition)
+    assert plain.reduced == grammar.reduced
+    assert plain.notes == grammar.notes == ()
