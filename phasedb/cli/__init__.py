@@ -37,7 +37,7 @@ COMMANDS: dict[str, tuple[str, str, str]] = {
     "peaks": ("phasedb.cli.characterise", "peaks", "Find the lines of a scan."),
     "index": ("phasedb.cli.characterise", "index", "Find lattice type and a from a list alone."),
     "refine": ("phasedb.cli.characterise", "refine", "Refine a lattice constant."),
-    "adopt": ("phasedb.cli.characterise", "adopt", "Enter a characterised unknown."),
+    "adopt": ("phasedb.cli.adopting", "adopt", "Enter a characterised unknown."),
     "instrument": ("phasedb.cli.instruments", "instrument", "Keep instruments and their shifts."),
     "batch": ("phasedb.cli.batch", "batch", "Match a folder of lists in parallel."),
     "report": ("phasedb.cli.report", "report", "Write a self-contained page of a match."),

@@ -23,6 +23,9 @@ from phasedb.errors import InputError
 
 if TYPE_CHECKING:
     from phasedb.characterise.cells import StartingCell
+    from phasedb.identify.settings import ShiftPrior
+    from phasedb.library import Library
+    from phasedb.measured.peaklist import PeakList
     from phasedb.measured.scan_result import ScanResult
 
 
@@ -177,3 +180,45 @@ def _starting_cell(
             hint="give --phase NAME, or --lattice P|I|F together with --a (rough, Å)",
         )
     return cell_from_values(lattice, a_text)
+
+
+@click.command(
+    epilog=examples(
+        "phasedb index unknown.csv --radiation Cu",
+        "phasedb index mixture.csv --left-over",
+    )
+)
+@click.argument("peaks_file", metavar="PEAKS", type=click.Path())
+@peak_options
+@click.option("--left-over", is_flag=True, help="Index only the lines that no stored phase claims.")
+@json_option
+@click.pass_context
+def index(ctx: click.Context, peaks_file: str, measured: PeakOptions, left_over: bool, as_json: bool) -> None:
+    """Find lattice type and lattice constant from a peak list alone.
+
+    Every lattice type is tried over the whole axis of a. Cells that the list cannot exclude are named, with
+    the line that would decide.
+    """
+    from phasedb.characterise.indexing import index_lines
+
+    peaks = measured.read(ctx, peaks_file)
+    if left_over:
+        peaks = lines_left_over(open_library(ctx), peaks, measured.shift_prior(ctx))
+    found = index_lines(peaks, shift_prior=measured.shift_prior(ctx))
+    from phasedb.report.indexing import index_document, index_text
+
+    if as_json:
+        print_json(index_document(found, peaks))
+    else:
+        print_text(index_text, found, peaks)
+
+
+def lines_left_over(library: Library, peaks: PeakList, prior: ShiftPrior | None) -> PeakList:
+    """Return the lines that no stored phase claims."""
+    from phasedb.characterise.indexing import left_over
+    from phasedb.cli.matching import TableOnce, run_match
+    from phasedb.identify.settings import MatchSettings, ShiftPrior
+
+    with library.reading():
+        found = run_match(peaks, TableOnce(library), MatchSettings(shift_prior=prior or ShiftPrior()))
+    return left_over(peaks, found)

@@ -56,7 +56,8 @@ def _chance(value: float) -> float | None:
     return rounded(value, "count" if value >= 1 else "probability")
 
 
-def _merit(merit_f: MeritF | None, merit_m: MeritM | None) -> dict[str, Any]:
+def merit_document(merit_f: MeritF | None, merit_m: MeritM | None) -> dict[str, Any]:
+    """Return both figures of merit as JSON values; None where there is none."""
     f: dict[str, Any] | None = None
     m: dict[str, Any] | None = None
     if merit_f is not None:
@@ -94,7 +95,7 @@ def _phase(phase: PhaseResult) -> dict[str, Any]:
         "lines_claimed": phase.lines_claimed,
         "lines_expected": rounded(phase.lines_expected, "count"),
         "absences": phase.absences,
-        "merit": _merit(phase.merit_f, phase.merit_m),
+        "merit": merit_document(phase.merit_f, phase.merit_m),
     }
 
 
@@ -109,7 +110,7 @@ def _candidate(candidate: UnlistedCandidate) -> dict[str, Any]:
             for name, difference in candidate.nearest
         ],
         "lines_claimed": candidate.lines_claimed,
-        "merit": _merit(candidate.merit_f, candidate.merit_m),
+        "merit": merit_document(candidate.merit_f, candidate.merit_m),
     }
 
 
@@ -122,7 +123,7 @@ def _unlisted(unlisted: Unlisted) -> dict[str, Any]:
             "a_esd_angstrom": None,
             "nearest": [],
             "lines_claimed": None,
-            "merit": _merit(None, None),
+            "merit": merit_document(None, None),
             "best_probability": None,
         }
     else:
