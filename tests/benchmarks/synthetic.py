@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import sqlite3
-import subprocess
 from collections.abc import Iterator
 from pathlib import Path
 
 import numpy as np
-from benchmarks.timing import environment, phasedb
+from benchmarks.timing import phasedb, seconds
 from study.library import starter_table
 
 from phasedb.crystal.lattice import LATTICE_TYPES
@@ -25,11 +24,15 @@ def build_library(path: Path, size: int, seed: int = 5) -> Path:
 
     Rows are written straight into the phase table: the store's own door takes hours for a million.
     """
-    subprocess.run(phasedb("--store", str(path), "init"), check=True, capture_output=True, env=environment())
+    seconds(phasedb("--store", str(path), "init"))
     with sqlite3.connect(path) as connection:
         columns = [row[1] for row in connection.execute("PRAGMA table_info(phase)")]
         template = dict(
-            zip(columns, connection.execute("SELECT * FROM phase WHERE name = 'copper'").fetchone(), strict=True)
+            zip(
+                columns,
+                connection.execute("SELECT * FROM phase WHERE name = 'copper'").fetchone(),
+                strict=True,
+            )
         )
         marks = ", ".join("?" * len(columns))
         connection.executemany(
@@ -41,7 +44,9 @@ def build_library(path: Path, size: int, seed: int = 5) -> Path:
     return path
 
 
-def _rows(columns: list[str], template: dict[str, object], size: int, seed: int) -> Iterator[tuple[object, ...]]:
+def _rows(
+    columns: list[str], template: dict[str, object], size: int, seed: int
+) -> Iterator[tuple[object, ...]]:
     table = starter_table()
     rng = np.random.default_rng(seed)
     parents = rng.integers(0, len(table), size)

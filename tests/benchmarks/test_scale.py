@@ -45,7 +45,9 @@ def test_large_library_is_asked_through_the_index(tmp_path: Path) -> None:
         engine = library._engine
         sa.event.listen(engine, "before_cursor_execute", lambda *args: sent.append((args[2], args[3])))
         match(peaks, library, MatchSettings())
-        asked = [(text, values) for text, values in sent if " phase" in text and text.lstrip().startswith("SELECT")]
+        asked = [
+            (text, values) for text, values in sent if " phase" in text and text.lstrip().startswith("SELECT")
+        ]
         assert asked
         with engine.connect() as connection:
             for text, values in asked:
