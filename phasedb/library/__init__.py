@@ -9,7 +9,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from phasedb.library.changes import Outcome
+    from phasedb.library.entering import Outcome
     from phasedb.library.entry import Draft, Entry, Source
     from phasedb.library.store import Library
 
@@ -17,7 +17,7 @@ _HOMES = {
     "Draft": "phasedb.library.entry",
     "Entry": "phasedb.library.entry",
     "Library": "phasedb.library.store",
-    "Outcome": "phasedb.library.changes",
+    "Outcome": "phasedb.library.entering",
     "Source": "phasedb.library.entry",
 }
 

@@ -14,9 +14,9 @@ import sqlalchemy as sa
 from phasedb.errors import InputError, StoreError
 from phasedb.library import connect, mapping, reading, tables
 from phasedb.library.chain import GENESIS, HistoryRow, is_whole
-from phasedb.library.changes import document_of
 from phasedb.library.differences import changed_lines
 from phasedb.library.documents import RECORD_TABLES, record_document
+from phasedb.library.entering import document_of
 from phasedb.library.entry import Entry, canonical_json, content_checksum, key_of, with_composition
 from phasedb.library.schema import schema_faults
 from phasedb.library.writing import fingerprint_of

@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any, Final
 import sqlalchemy as sa
 
 from phasedb.library import tables
-from phasedb.library.changes import new_uid
+from phasedb.library.entering import new_uid
 
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection

@@ -11,7 +11,7 @@ from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any, Final
 
 from phasedb.errors import InputError
-from phasedb.library import changes
+from phasedb.library import changes, entering
 from phasedb.library.differences import changed_lines
 from phasedb.library.door import Warned, accepted_text
 from phasedb.library.door_many import warnings_for_many
@@ -167,7 +167,7 @@ class _Planner:
             self._taken[key_of(alias)] = candidate
         entry = candidate.entry
         if entry is None:
-            entry = entry_of(candidate.prepared, uid=changes.new_uid(), by=self._by, at=self._at)
+            entry = entry_of(candidate.prepared, uid=entering.new_uid(), by=self._by, at=self._at)
             if candidate.withdrawn_reason:
                 entry = replace(entry, standing="withdrawn", withdrawn_reason=candidate.withdrawn_reason)
         self.plan.new.append((candidate, entry))
@@ -175,7 +175,7 @@ class _Planner:
     def _place_known(self, candidate: Candidate, entry: Entry, phase_id: int) -> None:
         """Place an entry whose uid the store knows."""
         here = self._known.entries[phase_id]
-        theirs, ours = changes.document_of(entry), changes.document_of(here)
+        theirs, ours = entering.document_of(entry), entering.document_of(here)
         if theirs == ours:
             self.plan.same.append(candidate)
             return
@@ -324,7 +324,7 @@ def write_plan(
             "; ".join(part for part in (remark(c), accepted_text(warned.get((c.file, c.row), ()))) if part)
             for c, _ in chunk
         ]
-        changes.write_new(writing, [entry for _, entry in chunk], action=action, remarks=said)
+        entering.write_new(writing, [entry for _, entry in chunk], action=action, remarks=said)
         if progress is not None:
             progress(len(chunk))
     for step in found.newer:

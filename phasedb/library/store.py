@@ -14,7 +14,7 @@ import sqlalchemy as sa
 from phasedb.crystal.lattice import LatticeType
 from phasedb.crystal.phases import PhaseTable
 from phasedb.errors import InputError, StoreError
-from phasedb.library import changes, connect, finding, reading, tables
+from phasedb.library import changes, connect, entering, finding, reading, tables
 from phasedb.library.chain import HistoryRow
 from phasedb.library.entry import Draft, Entry
 from phasedb.library.people import acting
@@ -23,7 +23,7 @@ from phasedb.library.writing import Writing
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection, Engine
 
-    from phasedb.library.changes import Outcome
+    from phasedb.library.entering import Outcome
 
 
 class Library:
@@ -294,8 +294,8 @@ class Library:
     # --- changing ---------------------------------------------------------------------------------
 
     def add(self, draft: Draft, *, accept_warnings: bool = False, keep_sites: bool = False) -> Outcome:
-        """Enter a phase as a draft; see `phasedb.library.changes.add`."""
-        return changes.add(self, draft, accept_warnings=accept_warnings, keep_sites=keep_sites)
+        """Enter a phase as a draft; see `phasedb.library.entering.add`."""
+        return entering.add(self, draft, accept_warnings=accept_warnings, keep_sites=keep_sites)
 
     def add_many(
         self,
@@ -308,8 +308,8 @@ class Library:
         remarks: Sequence[str] | None = None,
         keep_sites: bool = False,
     ) -> int:
-        """Enter many phases in one transaction; see `phasedb.library.changes.add_many`."""
-        return changes.add_many(
+        """Enter many phases in one transaction; see `phasedb.library.entering.add_many`."""
+        return entering.add_many(
             self,
             drafts,
             progress=progress,

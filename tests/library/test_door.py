@@ -8,8 +8,8 @@ import pytest
 
 from phasedb.errors import ExitCode, RuleRefusedError
 from phasedb.library import Draft, Library
-from phasedb.library.changes import WarningsRefusedError
 from phasedb.library.door import KX_WITHIN, physics_warnings
+from phasedb.library.entering import WarningsRefusedError
 from phasedb.library.preparing import prepare
 from phasedb.library.seed import starter_drafts
 
