@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import wraps
 from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
+
+from phasedb.cli.common import open_library
 
 if TYPE_CHECKING:
     from phasedb.identify.settings import ShiftPrior
@@ -32,6 +34,8 @@ class PeakOptions:
     camera_length: float | None
     camera_constant: float | None
     instrument: str | None
+    calibration_rings: str | None
+    calibration_phase: str | None
 
     def read_options(self, ctx: click.Context) -> ReadOptions:
         """Return what to read a list with: the options, then the instrument's record."""
@@ -67,7 +71,42 @@ class PeakOptions:
         """Return the peak list at `path` (``-`` is standard input)."""
         from phasedb.measured.reading import read_peak_list
 
-        return read_peak_list(path, self.read_options(ctx))
+        options = self.read_options(ctx)
+        if self.calibration_rings is None and self.calibration_phase is None:
+            return read_peak_list(path, options)
+        return self._read_calibrated(ctx, path, options)
+
+    def _read_calibrated(self, ctx: click.Context, path: str, options: ReadOptions) -> PeakList:
+        """Return the ring list at `path` with the camera calibrated from a standard film's rings."""
+        from phasedb.characterise.camera import calibrate_camera
+        from phasedb.characterise.cells import cell_from_phase
+        from phasedb.errors import InputError
+        from phasedb.measured.reading import read_peak_list, read_ring_radii
+
+        if self.calibration_rings is None or self.calibration_phase is None:
+            raise InputError(
+                "a calibration needs the standard's rings and its name",
+                hint="give --calibration-rings and --calibration-phase together",
+            )
+        radii, facts = read_ring_radii(self.calibration_rings)
+        known = options.over(facts)
+        radiation = known.resolved_radiation(self.calibration_rings)
+        found = calibrate_camera(
+            radii,
+            cell_from_phase(open_library(ctx).get(self.calibration_phase).phase(), known.temperature_k),
+            name=self.calibration_phase,
+            wavelength_angstrom=None if radiation is None else radiation.wavelength_angstrom,
+            near=known.camera_constant_mm_angstrom if radiation is None else known.camera_length_mm,
+            source=self.calibration_rings,
+        )
+        calibrated = replace(
+            options,
+            energy_kev=known.energy_kev,
+            camera_length_mm=found.camera_length_mm,
+            camera_constant_mm_angstrom=found.camera_constant_mm_angstrom,
+        )
+        peaks = read_peak_list(path, calibrated)
+        return replace(peaks, scale_esd_relative=found.esd_relative, notes=(*peaks.notes, found.text))
 
 
 def peak_options(command: _Command) -> _Command:
@@ -97,6 +136,10 @@ def peak_options(command: _Command) -> _Command:
         click.option("--camera-length", type=float, metavar="MM", help="Camera length in mm."),
         click.option("--camera-constant", type=float, metavar="MM*A", help="Camera constant in mm Å."),
         click.option("--instrument", metavar="NAME", help="A stored instrument that fills the rest."),
+        click.option(
+            "--calibration-rings", metavar="FILE", help="Rings of a standard film, to calibrate the camera."
+        ),
+        click.option("--calibration-phase", metavar="NAME", help="The entry that the standard film is."),
     )
     decorated: Any = gathered
     for option in reversed(options):

@@ -248,7 +248,7 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         wavelength=None,
         radius_mm=radius,
         shift_mean=np.zeros(3),
-        shift_scale=np.array([SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST, NEVER, NEVER]),
+        shift_scale=np.array([_scale_esd(peaks, is_camera=is_camera), NEVER, NEVER]),
         noise_center=NOISE_CENTER_RELATIVE_CAMERA if is_camera else NOISE_CENTER_RELATIVE,
         noise_spread=NOISE_SPREAD,
         resolution=2e-3 if is_camera else 5e-4,
@@ -257,6 +257,13 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         doublet_resolved=False,
         ghosts=(),
     )
+
+
+def _scale_esd(peaks: PeakList, *, is_camera: bool) -> float:
+    """Return the scale of the common error in ln d: a calibration's own, else the usual one."""
+    if peaks.scale_esd_relative is not None:
+        return peaks.scale_esd_relative
+    return SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST
 
 
 def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:

@@ -21,6 +21,8 @@ class RawLines:
     places : list of str, where each line was read
     facts : ReadOptions
     notes : tuple of str
+    per_unit : float
+        What turns positions, their esds and the range into `unit`: 0.5 for ring diameters.
     """
 
     position: list[float]
@@ -32,3 +34,4 @@ class RawLines:
     facts: ReadOptions
     fwhm_in_deg: bool = False
     notes: tuple[str, ...] = field(default=())
+    per_unit: float = 1.0

@@ -5,10 +5,12 @@ from __future__ import annotations
 import re
 from pathlib import Path
 
+import numpy as np
+
 from phasedb.errors import InputError
 from phasedb.measured.building import build_peak_list
 from phasedb.measured.options import ReadOptions
-from phasedb.measured.peaklist import PeakList
+from phasedb.measured.peaklist import FloatArray, PeakList
 from phasedb.measured.raw import RawLines
 from phasedb.measured.textfile import SourceText, read_source
 
@@ -45,6 +47,10 @@ def peak_list_from_text(given: SourceText, overrides: ReadOptions = NO_OPTIONS) 
     """Return the peak list in a text that was already read; see `read_peak_list`."""
     raw = _raw_lines(given, overrides)
     facts = overrides.over(raw.facts)
+    scale = raw.per_unit
+    measured_range = facts.measured_range
+    if measured_range is not None:
+        measured_range = (scale * measured_range[0], scale * measured_range[1])
     unit = raw.unit or facts.unit
     radiation = facts.resolved_radiation(given.source)
     if unit is None:
@@ -57,14 +63,14 @@ def peak_list_from_text(given: SourceText, overrides: ReadOptions = NO_OPTIONS) 
             )
         unit = "two-theta"
     return build_peak_list(
-        raw.position,
+        [scale * value for value in raw.position],
         unit=unit,
         intensity=raw.intensity,
-        esd=raw.esd,
+        esd=None if raw.esd is None else [scale * value for value in raw.esd],
         fwhm=raw.fwhm,
         fwhm_in_deg=raw.fwhm_in_deg,
         radiation=radiation,
-        measured_range=facts.measured_range,
+        measured_range=measured_range,
         goniometer_radius_mm=facts.goniometer_radius_mm,
         temperature_k=facts.temperature_k,
         camera_length_mm=facts.camera_length_mm,
@@ -75,6 +81,28 @@ def peak_list_from_text(given: SourceText, overrides: ReadOptions = NO_OPTIONS) 
         notes=(*given.notes, *raw.notes),
         places=raw.places,
     )
+
+
+def read_ring_radii(path: str | Path) -> tuple[FloatArray, ReadOptions]:
+    """Return the ring radii (mm) in a file and what its header says; columns as in a list of rings.
+
+    Raises
+    ------
+    InputError
+        If it is a list of something else, or a radius cannot be.
+    """
+    given = read_source(path)
+    raw = _raw_lines(given, NO_OPTIONS)
+    if raw.unit not in (None, "ring"):
+        raise InputError(
+            f"the list is in {raw.unit}, expected ring radii",
+            where=given.source,
+            hint="name the column ring_radius_mm or ring_diameter_mm",
+        )
+    radii = raw.per_unit * np.array(raw.position)
+    if not (np.isfinite(radii) & (radii > 0)).all():
+        raise InputError("a ring radius is not a number above 0", where=given.source)
+    return radii, raw.facts
 
 
 def _raw_lines(given: SourceText, overrides: ReadOptions) -> RawLines:

@@ -74,8 +74,7 @@ def read_text_list(text: str, source: str, *, unit: PositionUnit | None) -> RawL
                 hint="give one or remove the row",
             )
         position.append(cell_number(row[index], source, "position"))
-    if table.names and table.names[index].text.casefold() == "ring_diameter_mm":
-        position = [0.5 * value for value in position]
+    is_diameter = bool(table.names) and table.names[index].text.casefold() == "ring_diameter_mm"
     in_deg = "fwhm_deg" in columns
     notes = (f"columns ignored: {', '.join(ignored)}",) if ignored else ()
     return RawLines(
@@ -88,6 +87,7 @@ def read_text_list(text: str, source: str, *, unit: PositionUnit | None) -> RawL
         facts=facts,
         fwhm_in_deg=in_deg,
         notes=notes,
+        per_unit=0.5 if is_diameter else 1.0,
     )
 
 
