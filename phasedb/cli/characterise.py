@@ -148,10 +148,12 @@ def refine(
         expansion_per_k=cell.expansion_per_k,
         shift_prior=measured.shift_prior(ctx),
     )
-    from phasedb.report.refinement import refine_document, refine_text, residual_figure
+    from phasedb.report.refinement import refine_document, refine_text
 
     if figure is not None:
-        residual_figure(found, peaks, Path(figure))
+        from phasedb.report.refine_figure import refine_figure
+
+        refine_figure(found, peaks, Path(figure))
         note(f"figure written to {figure}")
     if as_json:
         print_json(refine_document(found, peaks))

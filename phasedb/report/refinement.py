@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from pathlib import Path
 from typing import Any, Final
 
 from phasedb.characterise.extrapolation import Extrapolation
@@ -181,42 +180,3 @@ def _lines(found: Refinement, peaks: PeakList, width: int) -> str:
             )
         )
     return table(columns, rows, width)
-
-
-def residual_figure(found: Refinement, peaks: PeakList, path: Path) -> None:
-    """Draw the residuals, and a of each line alone against the Nelson-Riley function, into `path`."""
-    from phasedb.report.drawing import FAINT, MARKS, light_grid, look, new_figure, save_figure
-
-    with look():
-        figure = new_figure(7.5, 5.0)
-        upper, lower = figure.subplots(2, 1)
-        is_angle = found.zero_deg is not None
-        scale = 1.0 if is_angle else 100.0
-        for axes in (upper, lower):
-            light_grid(axes)
-        mark = MARKS[0]
-        for line in found.lines:
-            residual = line.residual_deg if is_angle else line.residual_relative
-            colour = FAINT if line.is_outlier else mark.colour
-            shape = "x" if line.is_outlier else mark.shape
-            if residual is not None:
-                upper.plot(line.position, scale * residual, shape, color=colour, gid=f"residual-{line.line}")
-            lower.plot(line.position, line.a_angstrom, shape, color=colour, gid=f"alone-{line.line}")
-        upper.axhline(0.0, color=FAINT, linewidth=0.8)
-        upper.set_ylabel("observed - calculated, " + ("deg" if is_angle else "%"))
-        lower.axhline(found.a_angstrom, color=mark.colour, linewidth=1.0)
-        lower.axhspan(
-            found.a_angstrom - found.a_esd_angstrom,
-            found.a_angstrom + found.a_esd_angstrom,
-            color=mark.colour,
-            alpha=0.15,
-            linewidth=0,
-        )
-        lower.set_ylabel("a from the line alone, Å")
-        lower.set_xlabel(POSITION_TITLES[peaks.unit])
-        upper.set_title(
-            f"a = {format_measured(found.a_angstrom, found.a_esd_angstrom)} Å, {found.lattice_type}; "
-            "x: outliers; band: one standard uncertainty",
-            fontsize=9,
-        )
-        save_figure(figure, path)

@@ -61,7 +61,8 @@ def peaks_figure(result: ScanResult, path: Path) -> None:
                     fontsize=6,
                 )
         light_grid(upper)
-        upper.margins(y=0.15)
+        low, high = float(scan.counts.min()), float(scan.counts.max())
+        upper.set_ylim(low - 0.03 * (high - low), high + 0.16 * (high - low))
         upper.set_ylabel("counts")
         lower.set_ylabel("misfit / noise")
         lower.set_xlabel("2θ, degrees")
