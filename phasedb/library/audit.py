@@ -12,7 +12,7 @@ from typing import TYPE_CHECKING, Any, Final
 import sqlalchemy as sa
 
 from phasedb.errors import InputError, StoreError
-from phasedb.library import connect, mapping, reading, tables
+from phasedb.library import mapping, reading, tables
 from phasedb.library.chain import GENESIS, HistoryRow, is_whole
 from phasedb.library.differences import changed_lines
 from phasedb.library.documents import RECORD_TABLES, record_document
@@ -325,9 +325,3 @@ def _check_identifications(connection: Connection, found: Audit, replayed: _Repl
             found.faults.append(f"{what}: its history head is not that of row {row.history_count}")
         elif replayed.fingerprint_at[row.history_count] != row.library_fingerprint:
             found.faults.append(f"{what}: the library of that moment had another fingerprint")
-
-
-def audit_file(place: str, *, library_class: type[Library]) -> Audit:
-    """Audit the store at `place`, opened read-only."""
-    with library_class.open(place) as library, connect.store_errors(place):
-        return audit(library)

@@ -6,7 +6,6 @@ import contextlib
 import os
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
-from pathlib import Path
 from typing import TYPE_CHECKING, Any, Self
 
 import sqlalchemy as sa
@@ -391,8 +390,3 @@ def revision_of(connection: Connection, place: str) -> str:
         where=connect.hidden_password(place),
         hint="name a library with --store, or make one with 'phasedb init'",
     )
-
-
-def folder_of(place: str) -> Path:
-    """Return the folder that holds a store's file."""
-    return Path(place).absolute().parent
