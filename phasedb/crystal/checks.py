@@ -29,7 +29,7 @@ MOST_FILLED: Final = 0.7405
 EIGHT_TO_TWELVE: Final = 0.97
 """Radius with eight neighbours to radius with twelve: Goldschmidt, Z. phys. Chem. 133 (1928) 397."""
 
-# All common practice, no source: chosen so that every starter entry passes (tests/outside/test_solid.py).
+# All common practice, no source: chosen so that every starter entry passes (tests/crystal/test_checks.py).
 METAL_CONTACT: Final = (0.90, 1.08)
 """Contact distance of a metal or random alloy to twice its mean metallic radius."""
 COVALENT_LEAST: Final = 0.70

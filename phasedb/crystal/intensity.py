@@ -146,14 +146,14 @@ def form_factor(symbol: str, s_per_angstrom: ArrayLike, *, probe: str = "xray") 
 
 
 def _site_amplitude(
-    site: Site, s_per_angstrom: FloatArray, probe: str, wavelength_angstrom: float
+    site: Site, s_per_angstrom: FloatArray, probe: str, wavelength_angstrom: float | None
 ) -> tuple[FloatArray, float]:
     """Return f0 + f' (per line) and f'' of the mean atom of a site, before the displacement factor."""
     real = np.zeros_like(s_per_angstrom)
     imaginary = 0.0
     for symbol, occupancy in site.species:
         real += occupancy * form_factor(symbol, s_per_angstrom, probe=probe)
-        if probe == "xray":
+        if wavelength_angstrom is not None:
             first, second = anomalous_dispersion(symbol, wavelength_angstrom)
             real += occupancy * first
             imaginary += occupancy * second
@@ -166,6 +166,7 @@ def line_strengths(
     n_max: int | None = None,
     d_min_angstrom: float = D_MIN_ANGSTROM,
     radiation: Radiation | None = None,
+    dispersion: bool = True,
 ) -> Lines | None:
     """Return N and the sum of multiplicity times |F|² for each line of a phase, or None without a structure.
 
@@ -176,6 +177,8 @@ def line_strengths(
         Highest N; else all lines down to `d_min_angstrom`, at most N = 2500.
     radiation : Radiation, optional
         Decides f' and f'' (default Cu K-alpha1) and, for electrons, the form factor.
+    dispersion : bool
+        Whether X-ray form factors carry f' and f''.
 
     Returns
     -------
@@ -198,8 +201,9 @@ def line_strengths(
     top = min(top, int((2.0 * a * S_MAX_PER_ANGSTROM) ** 2))
     if top < 1:
         return np.zeros(0, dtype=np.int32), np.zeros(0)
-    wavelength = EMISSION_LINES["Cu"].alpha1 if radiation is None else radiation.wavelength_angstrom
     probe = "electron" if radiation is not None and radiation.convention == "electron" else "xray"
+    wavelength = EMISSION_LINES["Cu"].alpha1 if radiation is None else radiation.wavelength_angstrom
+    at_wavelength = wavelength if dispersion and probe == "xray" else None
     group = space_group(structure.space_group)
     bucket = _bucket(top)
     reflections = _reflections(group.lattice_type, group.swaps_indices, bucket)
@@ -210,7 +214,7 @@ def line_strengths(
     absorptive: NDArray[np.complex128] = np.zeros(len(line), dtype=np.complex128)
     for site in structure.sites:
         sums = _site_sums(structure.space_group, site.position, bucket)[: len(line)]
-        real, imaginary = _site_amplitude(site, s, probe, wavelength)
+        real, imaginary = _site_amplitude(site, s, probe, at_wavelength)
         damping = np.exp(-site.b_iso * s * s)
         dispersive += sums * (real * damping)[line]
         if imaginary:
