@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 from hashlib import sha256
-from typing import Final, Protocol
+from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,6 +17,7 @@ from phasedb.errors import InputError, UnknownNameError
 from phasedb.identify.assemble import Assembler
 from phasedb.identify.axis import make_axis
 from phasedb.identify.entries import Entries, prepare
+from phasedb.identify.gather import Gathered, PhaseSource, gather
 from phasedb.identify.foreign import keep_lines, set_aside
 from phasedb.identify.posterior import make_posterior
 from phasedb.identify.result import Match
@@ -30,16 +31,6 @@ FloatArray = NDArray[np.float64]
 
 TEMPERATURE: Final = 1.0
 STANDARD_DRIFT: Final = 2e-5  # ln a: certificates' relative expanded uncertainties are about 1.5e-5 to 2e-5
-
-
-class PhaseSource(Protocol):
-    """A library that gives its phases as a table."""
-
-    @property
-    def phase_count(self) -> int: ...
-    @property
-    def fingerprint(self) -> str: ...
-    def table(self, *, checked_only: bool = False) -> PhaseTable: ...
 
 
 def match(peaks: PeakList, library: PhaseTable | PhaseSource, settings: MatchSettings | None = None) -> Match:
@@ -59,11 +50,6 @@ def match(peaks: PeakList, library: PhaseTable | PhaseSource, settings: MatchSet
         If foreign lines take every line of the list.
     """
     settings = settings or MatchSettings()
-    if isinstance(library, PhaseTable):
-        table, count, fingerprint = library, len(library), table_fingerprint(library)
-    else:
-        table = library.table(checked_only=settings.checked_only)
-        count, fingerprint = library.phase_count, library.fingerprint
     whole = make_axis(peaks, settings.shift_prior)
     foreign_x = None
     if settings.foreign_positions is not None:
@@ -73,7 +59,13 @@ def match(peaks: PeakList, library: PhaseTable | PhaseSource, settings: MatchSet
         raise InputError("every line of the list is a foreign line: nothing is left to match")
     left = keep_lines(peaks, foreign.kept) if len(foreign.taken) else peaks
     axis = replace(make_axis(left, settings.shift_prior), blocked=foreign.blocked)
-    entries = prepare(table, settings, peaks.temperature_k)
+    if isinstance(library, PhaseTable):
+        gathered = Gathered(library, np.ones(len(library)))
+        count, fingerprint = len(library), table_fingerprint(library)
+    else:
+        gathered = gather(axis, library, settings, peaks.temperature_k)
+        count, fingerprint = library.phase_count, library.fingerprint
+    entries = prepare(gathered.table, settings, peaks.temperature_k, phase_count=count, crowd=gathered.crowd)
     entries, always = _with_standard(entries, settings)
     search = Search(axis, entries, settings.most_phases, always=always)
     search.run()

@@ -144,7 +144,7 @@ class Assembler:
                 if candidates.entry_of[member] >= 0:
                     chance[member] = chance.get(member, 0.0) + item.probability
         order = sorted(chance, key=lambda m: (-chance[m], self._name(m).casefold(), self._name(m)))
-        reported = [m for m in order if chance[m] >= REPORTED] or order[:0]
+        reported = [m for m in order if chance[m] >= REPORTED]
         reported += [m for m in order[:FEWEST_REPORTED] if m not in reported and chance[m] > 1e-6]
         numbers = {candidates.entry_of[m]: m for m in chance}
         results = [result for m in reported if (result := self._phase(m, chance[m], numbers)) is not None]
@@ -192,7 +192,7 @@ class Assembler:
         separated = [
             text for other in alike[:2] for text in what_separates(self.axis, entries, index, other, reading)
         ]
-        ln_odds = self.posterior.ln_odds(lambda key: member in key)
+        ln_odds = self.posterior.ln_odds(lambda key: member in key) - np.log(entries.crowd[index])
         claims = fit.batch.claims[fit.row, place].sum(axis=1)
         n, delta, d = self._claimed_lines(fit, place)
         lattice = LATTICE_TYPES[int(entries.lattice[index])]
@@ -205,12 +205,12 @@ class Assembler:
             lattice_type=lattice,
             structure_type=table.structure_type[row] or None,
             standing=table.standing[row],
-            probability=probability,
+            probability=probability / float(entries.crowd[index]),
             group_probability=self.posterior.chance(lambda key: not group.isdisjoint(key)),
             look_alikes=tuple(
                 table.name[int(entries.rows[other])] for other in alike[:MOST_LOOK_ALIKES_NAMED]
             ),
-            look_alike_count=len(alike),
+            look_alike_count=round(float(entries.crowd[[index, *alike]].sum())) - 1,
             separated_by=tuple(dict.fromkeys(separated)),
             expected_by_chance=expected_by_chance(
                 self.axis, entries, fit, member, int(entries.lattice[index]), phase_count=self.phase_count
@@ -299,7 +299,7 @@ class Assembler:
         probability = self.posterior.chance(lambda key: any(candidates.entry_of[m] < 0 for m in key))
         places: list[tuple[int, float, float, Fitted, int]] = []  # lattice, ln a, probability, fit, place
         for item in self.posterior.sets:
-            if item.fit is None:
+            if item.fit is None or item.only_looks_cubic:
                 continue
             for place, member in enumerate(item.fit.members):
                 if candidates.entry_of[member] >= 0:
@@ -381,7 +381,7 @@ class Assembler:
     def _ledger(self) -> tuple[LedgerLine, ...]:
         best = self.posterior.best
         weights = np.array([item.probability for item in self.fitted_sets])
-        empty = sum(item.probability for item in self.posterior.sets if not item.members)
+        empty = sum(i.probability for i in self.posterior.sets if not i.members and i.fit is None)
         covered = float(weights.sum()) + empty
         corrected = self._corrected_x(best)
         lines = []
@@ -406,6 +406,9 @@ class Assembler:
             unexplained += weight * float(fit.batch.background[fit.row, observed])
             for place, member in enumerate(fit.members):
                 claims = fit.batch.claims[fit.row, place, observed]
+                if item.only_looks_cubic and self.search.candidates.entry_of[member] < 0:
+                    unexplained += weight * float(claims.sum())
+                    continue
                 for slot in np.flatnonzero(claims > 1e-3):
                     line = int(fit.batch.claim_line[fit.row, place, observed, slot])
                     kind = int(pool.kind[member, line])

@@ -20,6 +20,8 @@ ROOM_K: Final = 298.0
 EXPECTED_LISTED: Final = 1.5  # phases of the library expected in a sample (DESIGN section 6)
 MOST_LIKELY_PRIOR: Final = 0.35  # odds of one entry before the lines are seen, however sharp the chemistry
 # Student-t scales of ln a by drift class: what a real sample's a differs from the stored one by (METHODS 6).
+# ... and how far it may at most, beyond which the entry is not what the sample holds.
+LARGEST_DRIFT: Final = {"line compound": 0.002, "alloy": 0.009, "solid solution": 0.009}
 DRIFT_SCALE: Final = {"line compound": 3e-4, "alloy": 2.0e-3, "solid solution": 2.5e-3}
 TYPICAL_EXPANSION: Final = (
     1.5e-5  # 1/K, the spread of unknown expansion coefficients (common practice, no source)
@@ -29,16 +31,21 @@ FAR_IN_TEMPERATURE_K: Final = 150.0
 
 @dataclass(frozen=True, slots=True)
 class Entries:
-    """Matchable phases as columns, in the order of their name keys."""
+    """Matchable phases as columns, in the order of their name keys.
+
+    In a large library each stands for `crowd` entries that its window holds; `ln_odds` counts them all.
+    """
 
     table: PhaseTable
     rows: NDArray[np.int64]  # rows of the table that may match
     lattice: NDArray[np.int64]
     ln_a: FloatArray
     drift_scale: FloatArray
+    largest_drift: FloatArray
     ln_a_low: FloatArray
     ln_a_high: FloatArray
     ln_odds: FloatArray
+    crowd: FloatArray
     left_out_for_temperature: tuple[str, ...]
 
     def __len__(self) -> int:
@@ -61,7 +68,12 @@ class Entries:
 
 
 def prepare(
-    table: PhaseTable, settings: MatchSettings, temperature_k: float | None, *, phase_count: int | None = None
+    table: PhaseTable,
+    settings: MatchSettings,
+    temperature_k: float | None,
+    *,
+    phase_count: int | None = None,
+    crowd: FloatArray | None = None,
 ) -> Entries:
     """Return the entries that may match: at the measuring temperature, with drift and prior odds."""
     measured_at = temperature_k if temperature_k is not None else ROOM_K
@@ -85,12 +97,15 @@ def prepare(
     high = np.where(np.isnan(table.a_high_angstrom), ln_a, np.log(table.a_high_angstrom) + ln_shift)
     ranged = high > low
     scale = np.where(ranged, np.minimum(scale, 1e-3), scale)
+    largest = np.array([LARGEST_DRIFT[name] for name in DRIFT_CLASSES])[table.drift]
+    largest = np.where(ranged, 0.002, largest) + 3.0 * np.hypot(relative_esd, spread)
     # what is compatible with the chemistry shares the expectation; the rest keeps its share of the whole library
-    crowd = 1.0 if phase_count is None else phase_count / max(len(table), 1)
-    compatible = max(float((weight >= 1.0).sum()) * crowd, 1e-9)
-    whole = max(len(table) * crowd, 1.0)
+    each = np.ones(len(table)) if crowd is None else crowd
+    whole = float(max(phase_count or len(table), 1))
+    suits = float((each * (weight >= 1.0)).sum() / max(float(each.sum()), 1e-9))
+    compatible = max(whole * suits, 1e-9)
     odds = np.where(weight >= 1.0, EXPECTED_LISTED / compatible, EXPECTED_LISTED * weight / whole)
-    odds = np.minimum(odds, MOST_LIKELY_PRIOR)
+    odds = np.minimum(odds * each, MOST_LIKELY_PRIOR)
     with np.errstate(divide="ignore"):
         ln_odds = np.log(odds)
     return Entries(
@@ -99,8 +114,10 @@ def prepare(
         lattice=table.lattice[rows].astype(np.int64),
         ln_a=ln_a[rows],
         drift_scale=scale[rows],
+        largest_drift=largest[rows],
         ln_a_low=np.minimum(low, ln_a)[rows],
         ln_a_high=np.maximum(high, ln_a)[rows],
         ln_odds=ln_odds[rows],
+        crowd=each[rows],
         left_out_for_temperature=tuple(table.name[row] for row in np.flatnonzero(far & ~keep)),
     )

@@ -34,8 +34,7 @@ HEIGHT_SPREAD: Final = (0.45, 1.2)  # ln: powder, textured (tuned)
 HEIGHT_MIX: Final = (0.72, 0.23, 0.05)  # powder, textured, anything: texture cannot veto a phase (tuned)
 SHIFT_TAIL: Final = 3.0  # degrees of freedom of the Student-t priors
 DRIFT_TAIL: Final = 3.0
-LARGEST_DRIFT: Final = 0.009  # ln a: samples of one phase differ by up to about 1 % (METHODS section 6)
-LARGEST_DRIFT_EDGE: Final = 0.0015
+DRIFT_EDGE: Final = 0.2  # of the largest drift: how sharply an entry ends there
 SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
 DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
@@ -59,6 +58,7 @@ class Pool:
     lines : LineTable
     ln_a : (n_candidates,) ln of the stored a at the measuring temperature (unlisted: of the starting a)
     drift_scale : (n_candidates,) Student-t scale of the drift in ln a; 0 for unlisted
+    largest_drift : (n_candidates,) how far in ln a a sample may be from the entry
     ln_a_low, ln_a_high : (n_candidates,) stated range, equal to ln_a where there is none
     ln_odds : (n_candidates,) prior odds of being present; for unlisted, per unit of ln a
     unlisted : (n_candidates,) bool
@@ -69,6 +69,7 @@ class Pool:
     lines: LineTable
     ln_a: FloatArray
     drift_scale: FloatArray
+    largest_drift: FloatArray
     ln_a_low: FloatArray
     ln_a_high: FloatArray
     ln_odds: FloatArray
@@ -154,6 +155,7 @@ class _Fit:
         self.kind = lines.kind[members]
         self.stored = pool.ln_a[members]
         self.scale = pool.drift_scale[members]
+        self.largest = pool.largest_drift[members]
         self.low = pool.ln_a_low[members]
         self.high = pool.ln_a_high[members]
         self.unlisted = pool.unlisted[members]
@@ -207,7 +209,7 @@ class _Fit:
         drift = log_student(self.drift(), np.maximum(self.scale, 1e-12), DRIFT_TAIL) + np.log(
             np.maximum(self.scale, 1e-12)
         )
-        prior = np.where(self.unlisted, 0.0, drift).sum(axis=1)
+        prior = np.where(self.unlisted, 0.0, drift - self.beyond_drift()).sum(axis=1)
         prior += log_student(self.phi - self.axis.shift_mean, self.axis.shift_scale, SHIFT_TAIL).sum(axis=1)
         return np.asarray(
             np.log(self.total).sum(axis=1) - self.rate + np.log1p(-p).sum(axis=(1, 2)) + prior + self.ln_odds
@@ -450,6 +452,11 @@ class _Fit:
         """Return ln a minus the nearest end of the stated range (or the stored value); 0 inside the range."""
         return np.asarray(self.u - np.clip(self.u, self.low, self.high))
 
+    def beyond_drift(self) -> FloatArray:
+        """Return what a drift beyond the largest one costs, in nats (n_sets, m)."""
+        beyond = np.maximum(np.abs(self.drift()) - self.largest, 0.0)
+        return np.asarray(0.5 * (beyond / (DRIFT_EDGE * self.largest)) ** 2)
+
     def step(self) -> None:
         """Move shifts, lattice constants and the noise scale one step."""
         matrix, right, of_lines = self.normal_equations()
@@ -554,8 +561,7 @@ class _Fit:
         prior = log_student(self.phi - axis.shift_mean, axis.shift_scale, SHIFT_TAIL).sum(axis=1)
         drift = self.drift()
         listed = log_student(drift, np.maximum(self.scale, 1e-12), DRIFT_TAIL)
-        beyond = np.maximum(np.abs(drift) - np.maximum(LARGEST_DRIFT, 3.0 * self.scale), 0.0)
-        listed -= 0.5 * (beyond / LARGEST_DRIFT_EDGE) ** 2
+        listed -= self.beyond_drift()
         # a stated range spreads the prior over itself: density 1/(range + the width of its tails)
         width = self.high - self.low
         tails = np.sqrt(3.0) * np.pi / 2.0 * np.maximum(self.scale, 1e-12)

@@ -13,15 +13,24 @@ from phasedb.identify.search import SAME_PLACE, Fitted, Key, Search
 KEPT: Final = 14.0  # nats below the best set within which sets count
 ALTERNATIVE: Final = 8.0  # nats below a set within which exchanged members count
 MOST_COMBINATIONS: Final = 4000
+# Share of unexplained lines at which an unlisted index is as often chance as cubic, and how fast it falls there
+# (tuned on lists of cubic phases taken out of the library and of non-cubic samples).
+TRUST_HALF: Final = 0.135
+TRUST_SLOPE: Final = 28.0
 
 
 @dataclass(frozen=True, slots=True)
 class WeightedSet:
-    """A set with its posterior probability; `fit` is None for a combination that was not fitted itself."""
+    """A set with its posterior probability; `fit` is None for a combination that was not fitted itself.
+
+    `members` are the cubic phases that it holds. Where `only_looks_cubic`, the unlisted members of `fit` are
+    taken for lines of something that is not cubic, and are not among `members`.
+    """
 
     members: Key
     probability: float
     fit: Fitted | None
+    only_looks_cubic: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -72,10 +81,33 @@ def make_posterior(search: Search, temperature: float) -> Posterior:
     reference = top
     scaled = {key: (value - reference) / temperature for key, value in kept.items()}
     total = float(np.logaddexp.reduce(list(scaled.values())))
-    ordered = sorted(scaled.items(), key=lambda item: (-item[1], item[0]))
-    return Posterior(
-        tuple(WeightedSet(key, float(np.exp(value - total)), fits.get(key)) for key, value in ordered), total
-    )
+    sets: list[WeightedSet] = []
+    for key, value in scaled.items():
+        probability, fit = float(np.exp(value - total)), fits.get(key)
+        unlisted = [member for member in key if search.candidates.entry_of[member] < 0]
+        if not unlisted:
+            sets.append(WeightedSet(key, probability, fit))
+            continue
+        trust = _trust_in_cubic(search, fit, unlisted) if fit is not None else 0.5
+        rest = tuple(member for member in key if member not in unlisted)
+        sets.append(WeightedSet(key, probability * trust, fit))
+        sets.append(WeightedSet(rest, probability * (1.0 - trust), fit, only_looks_cubic=True))
+    sets.sort(key=lambda item: (-item.probability, item.members, item.only_looks_cubic))
+    return Posterior(tuple(sets), total)
+
+
+def _trust_in_cubic(search: Search, fit: Fitted, unlisted: list[int]) -> float:
+    """Return the chance that unlisted phases of a set are cubic, rather than part of a non-cubic pattern.
+
+    Lines of one zone of a non-cubic lattice, or of one with rational axial ratios, follow a cubic sequence
+    exactly. What gives them away is that the same list holds lines that nothing cubic explains.
+    """
+    batch, row = fit.batch, fit.row
+    places = [place for place, member in enumerate(fit.members) if member in unlisted]
+    claimed = float((batch.claims[row, places].sum(axis=(0, 2)) > 0.5).sum())
+    unexplained = float((batch.background[row] > 0.5).sum())
+    share = max(unexplained - 1.0, 0.0) / max(claimed + unexplained, 1.0)
+    return float(1.0 / (1.0 + np.exp(TRUST_SLOPE * (share - TRUST_HALF))))
 
 
 def _without_doubles(search: Search, sets: Iterable[Fitted]) -> dict[Key, Fitted]:

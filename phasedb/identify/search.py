@@ -38,9 +38,13 @@ LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
 N_SINGLE: Final = 70  # proposals evaluated as first phase
 N_NEXT: Final = 36  # proposals evaluated as a further phase
 N_UNLISTED: Final = 5  # places of each lattice type evaluated as unlisted
-N_PATTERNS: Final = 4  # line patterns tried for each of them
+N_PATTERNS: Final = 5  # line patterns tried for each of them
 N_PARENTS: Final = 6
 N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
+ISOTYPIC_WEIGHT: Final = 0.3  # of the patterns of an unlisted phase: those of entries near its a
+ISOTYPIC_REACH: Final = 0.05  # ln a
+MOST_ISOTYPIC: Final = 6
+ISOTYPIC_SCATTER: Final = 1.3
 PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
 # nats in the rough evidence below the best, beyond which a set is not fitted to the end
@@ -91,6 +95,16 @@ class Start:
     ln_sigma: float
 
 
+@dataclass(frozen=True, slots=True)
+class Pattern:
+    """A line pattern of an unlisted phase: its prior weight, and how much its heights scatter."""
+
+    n: NDArray[np.integer]
+    strength: FloatArray
+    ln_weight: float
+    scatter: float
+
+
 class Candidates:
     """The growing pool: listed entries by index, unlisted phases by place and pattern."""
 
@@ -100,7 +114,7 @@ class Candidates:
         self.entries = entries
         self._tables: list[LineTable] = []
         self._stacked: Pool | None = None
-        self._columns: list[tuple[float, float, float, float, float, float, bool]] = []
+        self._columns: list[tuple[float, float, float, float, float, float, float, bool]] = []
         self.entry_of: list[int] = []  # -1 for unlisted
         self.lattice_of: list[int] = []
         self.pattern_of: list[int] = []  # which line pattern an unlisted phase is given
@@ -121,6 +135,7 @@ class Candidates:
                     (
                         float(e.ln_a[index]),
                         float(e.drift_scale[index]),
+                        float(e.largest_drift[index]),
                         float(e.ln_a_low[index]),
                         float(e.ln_a_high[index]),
                         float(e.ln_odds[index]),
@@ -139,18 +154,27 @@ class Candidates:
         place = (lattice, round(ln_a / SAME_PLACE))
         if place not in self._of_place:
             name = LATTICE_TYPES[lattice]
-            patterns = archetypes(name, float(np.exp(ln_a)))
+            patterns = self._patterns(lattice, ln_a)
             table = make_lines(
-                self.axis, np.full(len(patterns), ln_a), [(one.n, one.strength) for _, one in patterns]
+                self.axis, np.full(len(patterns), ln_a), [(one.n, one.strength) for one in patterns]
             )
-            rows = self._likeliest_patterns(table, ln_a, cell, [weight for weight, _ in patterns])
+            rows = self._likeliest_patterns(table, ln_a, cell, [one.ln_weight for one in patterns])
             self._tables.append(table.take(rows))
             density = np.log(self.expected_unlisted * UNLISTED_LATTICE[name] / LN_A_SPAN)
             numbers = []
             for row in rows.tolist():
                 numbers.append(len(self._columns))
                 self._columns.append(
-                    (ln_a, 0.0, ln_a, ln_a, density + patterns[row][0], PATTERN_SCATTER, True)
+                    (
+                        ln_a,
+                        0.0,
+                        1.0,
+                        ln_a,
+                        ln_a,
+                        density + patterns[row].ln_weight,
+                        patterns[row].scatter,
+                        True,
+                    )
                 )
                 self.entry_of.append(-1)
                 self.lattice_of.append(lattice)
@@ -159,10 +183,34 @@ class Candidates:
             self._stacked = None
         return self._of_place[place]
 
+    def _patterns(self, lattice: int, ln_a: float) -> list[Pattern]:
+        """Return the line patterns that an unlisted phase may have: archetypes, and those of entries nearby."""
+        name = LATTICE_TYPES[lattice]
+        typical = archetypes(name, float(np.exp(ln_a)))
+        near = self._isotypic(lattice, ln_a)
+        if not near:
+            return [Pattern(one.n, one.strength, weight, PATTERN_SCATTER) for weight, one in typical]
+        kept = float(np.log1p(-ISOTYPIC_WEIGHT))
+        each = float(np.log(ISOTYPIC_WEIGHT / len(near)))
+        patterns = [Pattern(one.n, one.strength, kept + weight, PATTERN_SCATTER) for weight, one in typical]
+        return [*patterns, *(Pattern(*self.entries.pattern(index), each, ISOTYPIC_SCATTER) for index in near)]
+
+    def _isotypic(self, lattice: int, ln_a: float) -> list[int]:
+        """Return the nearest entry of each structure type near a place: a new phase is often like its neighbours."""
+        entries = self.entries
+        gap = np.abs(entries.ln_a - ln_a)
+        near = np.flatnonzero((entries.lattice == lattice) & (gap < ISOTYPIC_REACH))
+        found: dict[str, int] = {}
+        for index in near[np.argsort(gap[near], kind="stable")].tolist():
+            kind = entries.table.structure_type[int(entries.rows[index])]
+            if entries.has_structure(index) and kind not in found:
+                found[kind] = index
+        return list(found.values())[:MOST_ISOTYPIC]
+
     def _likeliest_patterns(
         self, table: LineTable, ln_a: float, cell: Cell, ln_weights: list[float]
     ) -> IntArray:
-        """Return the rows of the patterns whose seen and unseen lines suit the list best; generic ones are last."""
+        """Return the rows of the patterns whose seen and unseen lines suit the list best."""
         axis = self.axis
         if len(ln_weights) <= N_PATTERNS:
             return np.arange(len(ln_weights))
@@ -188,10 +236,10 @@ class Candidates:
         if self._stacked is None:
             lines = stack(self._tables)
             self._tables = [lines]
-            columns = np.array([column[:6] for column in self._columns])
-            ln_a, scale, low, high, odds, height = columns.T
-            unlisted = np.array([column[6] for column in self._columns], dtype=bool)
-            self._stacked = Pool(lines, ln_a, scale, low, high, odds, unlisted, height)
+            columns = np.array([column[:7] for column in self._columns])
+            ln_a, scale, largest, low, high, odds, height = columns.T
+            unlisted = np.array([column[7] for column in self._columns], dtype=bool)
+            self._stacked = Pool(lines, ln_a, scale, largest, low, high, odds, unlisted, height)
         return self._stacked
 
 
