@@ -129,7 +129,11 @@ def check_positive(value: float, name: str, *, where: str = "") -> float:
         If it is not.
     """
     if not (np.isfinite(value) and value > 0):
-        raise InputError(f"{name} {value:g}: expected a finite number above 0", where=where)
+        raise InputError(
+            f"{name} {value:g}: expected a finite number above 0",
+            where=where,
+            hint="correct it or leave it out",
+        )
     return float(value)
 
 
