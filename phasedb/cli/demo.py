@@ -43,8 +43,8 @@ STEPS: Final = (
         ("match", SAMPLES[1], "--elements", "Mg,In,Sn,O"),
     ),
     Step(
-        "Another firing shows the pigment alone. Adopt it: a is refined from its lines, the usual checks are"
-        " made, and it enters the library as a draft with its source.",
+        "Another firing shows the pigment alone. The workshop knows it for a spinel. Adopt it: a is refined"
+        " from its lines, the usual checks are made, and it enters the library as a draft with its source.",
         (
             "adopt",
             SAMPLES[2],
@@ -52,6 +52,8 @@ STEPS: Final = (
             PIGMENT,
             "--formula",
             "Mg1.25In1.5Sn0.25O4",
+            "--structure",
+            "H1_1",
             "--source",
             "glaze notebook 3, page 41 (invented)",
         ),
