@@ -130,6 +130,8 @@ def phase_of_block(block: Any) -> CifPhase:
     groups = space_groups_of(block)
     rows = atom_rows(block, notes)
     structure, formula = structure_of(groups, rows, stated_formula(block, notes), notes)
+    if formula is None and rows:
+        raise InputError("the symmetry is not given: neither operations nor a space-group name")
     if formula is None:
         raise InputError("neither a formula nor atom sites are given")
     if structure is not None:

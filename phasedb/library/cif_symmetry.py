@@ -34,7 +34,7 @@ def first(block: Any, *names: str) -> str:
     for name in names:
         for raw in block.find_values(name):
             text = str(cif.as_string(raw)).strip() if not cif.is_null(raw) else ""
-            if text:
+            if text not in ("", "?", "."):  # some programs quote the marks for unknown
                 return text
     return ""
 
