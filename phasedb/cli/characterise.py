@@ -32,7 +32,7 @@ if TYPE_CHECKING:
 @click.command(
     epilog=examples(
         "phasedb peaks scan.xy --radiation Cu -o unknown.csv --figure unknown.svg",
-        "phasedb match unknown.csv",
+        "phasedb peaks scan.cif --json",
     )
 )
 @click.argument("scan_file", metavar="SCAN", type=click.Path())

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any, Final
 import click
 
 from phasedb.cli.common import examples, json_option, note, open_library, print_json
+from phasedb.cli.completion import complete_phase
 from phasedb.errors import InputError
 
 if TYPE_CHECKING:
@@ -28,7 +29,12 @@ def instrument_record(ctx: click.Context, name: str) -> Instrument:
     return known[name]
 
 
-@click.group()
+@click.group(
+    epilog=examples(
+        "phasedb instrument add D1 --radiation Cu --goniometer-radius 240",
+        "phasedb instrument list",
+    )
+)
 def instrument() -> None:
     """Keep instruments: radiation, radius, and shifts learned from a standard.
 
@@ -52,7 +58,12 @@ def instrument() -> None:
     "--geometry", type=click.Choice(("reflection", "transmission")), default="reflection", show_default=True
 )
 @click.option("--standard-list", metavar="PEAKS", help="A peak list of a standard measured on it.")
-@click.option("--standard", metavar="NAME", help="The entry that the standard is; its a is held fixed.")
+@click.option(
+    "--standard",
+    metavar="NAME",
+    shell_complete=complete_phase,
+    help="The entry that the standard is; its a is held fixed.",
+)
 @click.option("--remarks", metavar="TEXT", default="", help="Anything else.")
 @click.option("--replace", "replace_old", is_flag=True, help="Enter it anew, as its next version.")
 @json_option
