@@ -117,17 +117,30 @@ def maxima(answer: Answer, threshold: float) -> list[Candidate]:
 def strongest_over_scales(answers: list[Answer], threshold: float) -> list[Candidate]:
     """Return places where some filter answers above `threshold`, each at its best scale, strongest first.
 
-    A weaker answer within the width of a stronger one is the same line seen at another scale.
+    A weaker answer within the width of a stronger one is the same line seen at another scale; but where a
+    finer filter sees two lines inside a wide one, the two are meant.
     """
-    every = sorted(
-        (candidate for answer in answers for candidate in maxima(answer, threshold)),
-        key=lambda candidate: -candidate.strength,
-    )
+    seen = [maxima(answer, threshold) for answer in answers]
+    every = sorted((one for found in seen for one in found), key=lambda one: -one.strength)
     kept: list[Candidate] = []
     for candidate in every:
         if all(
             abs(candidate.x - other.x) > 0.8 * max(other.fwhm, min(candidate.fwhm, 3.0 * other.fwhm))
             for other in kept
         ):
-            kept.append(candidate)
+            kept += _parts_of(candidate, seen) or [candidate]
     return kept
+
+
+def _parts_of(candidate: Candidate, seen: list[list[Candidate]]) -> list[Candidate]:
+    """Return the lines that a finer filter sees inside a candidate, or none if it is one line there too."""
+    best: list[Candidate] = []
+    for found in seen:
+        inside = [
+            one
+            for one in found
+            if one.fwhm < 0.75 * candidate.fwhm and abs(one.x - candidate.x) <= 0.8 * candidate.fwhm
+        ]
+        if len(inside) >= 2 and (len(best) < 2 or inside[1].strength > best[1].strength):
+            best = inside
+    return best

@@ -75,18 +75,21 @@ def fit_group(
     start = np.stack([centre, area, prior.ln_fwhm, prior.logit_mixing], axis=1).ravel()
     parameters = np.concatenate([start, [np.log(prior.doublet_ratio)], np.zeros(2)])
     problem = _Problem(x, y, sigma, prior, doublet, centre.copy(), n)
-    residual, jacobian = problem.at(parameters)
+    residual, slope = problem.at(parameters)
     cost, damping = float(residual @ residual), 1e-3
+    normal, gradient = slope @ slope.T, slope @ residual
     for _ in range(steps):
-        normal, gradient = jacobian.T @ jacobian, jacobian.T @ residual
-        diagonal = np.diag(normal).copy()
-        step = np.linalg.solve(normal + np.diag(damping * diagonal + 1e-12 * diagonal.max()), gradient)
+        # columns are scaled first: areas may be counted in any unit
+        scale = np.sqrt(np.maximum(np.diag(normal), 1e-300))
+        even = normal / np.outer(scale, scale) + (damping + 1e-12) * np.eye(len(scale))
+        step = np.linalg.solve(even, gradient / scale) / scale
         trial = problem.within(parameters + step)
-        new_residual, new_jacobian = problem.at(trial)
+        new_residual, new_slope = problem.at(trial)
         new_cost = float(new_residual @ new_residual)
         if new_cost < cost:
             gain = (cost - new_cost) / max(cost, 1e-300)
-            parameters, residual, jacobian, cost = trial, new_residual, new_jacobian, new_cost
+            parameters, residual, cost = trial, new_residual, new_cost
+            normal, gradient = new_slope @ new_slope.T, new_slope @ new_residual
             damping = max(damping * 0.3, 1e-9)
             if gain < LEAST_GAIN:
                 break
@@ -94,7 +97,7 @@ def fit_group(
             damping *= 6.0
             if damping > 1e8:
                 break
-    return problem.result(parameters, residual, jacobian)
+    return problem.result(parameters, residual, normal)
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,14 +111,16 @@ class _Problem:
     n: int
 
     def at(self, parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """Return (observed - calculated) / sigma, the priors' below, and derivatives of the model."""
+        """Return (observed - calculated) / sigma, the priors' below, and their derivatives."""
         shape = parameters[: PER_LINE * self.n].reshape(self.n, PER_LINE)
         centre, area = shape[:, 0], shape[:, 1]
         fwhm, mixing = np.exp(shape[:, 2]), 1.0 / (1.0 + np.exp(-shape[:, 3]))
         ratio = float(np.exp(parameters[PER_LINE * self.n]))
         middle = self.x - 0.5 * (self.x[0] + self.x[-1])
         model = parameters[-2] + parameters[-1] * middle
-        columns = np.zeros((len(parameters), len(self.x)))
+        points = len(self.x)
+        slope = np.zeros((len(parameters), points + 2 * self.n + 1))
+        columns = slope[:, :points]
         for which, (moved, by_centre, share) in enumerate(components(centre, self.doublet, ratio)):
             value, d_centre, d_width, d_mixing = pseudo_voigt(self.x, moved, fwhm, mixing)
             height = share * area[:, None]
@@ -127,42 +132,25 @@ class _Problem:
             if which == 1:
                 columns[PER_LINE * self.n] = (height * value).sum(axis=0)
         columns[-2], columns[-1] = 1.0, middle
-        below, below_slope = self._priors(parameters)
-        residual = np.concatenate([(self.y - model) / self.sigma, below])
-        return residual, np.concatenate([(columns / self.sigma).T, below_slope])
+        columns /= self.sigma
+        below = self._add_priors(parameters, slope[:, points:])
+        return np.concatenate([(self.y - model) / self.sigma, below]), slope
 
-    def _priors(self, parameters: FloatArray) -> tuple[FloatArray, FloatArray]:
+    def _add_priors(self, parameters: FloatArray, slope: FloatArray) -> FloatArray:
+        """Return the priors' residuals (widths, shares, ratio) and put their derivatives into `slope`."""
         shape = parameters[: PER_LINE * self.n].reshape(self.n, PER_LINE)
-        index = np.arange(self.n) * PER_LINE
-        blocks = (
-            (
-                index + 2,
-                (self.prior.ln_fwhm - shape[:, 2]) / self.prior.ln_fwhm_scale,
-                self.prior.ln_fwhm_scale,
-            ),
-            (
-                index + 3,
-                (self.prior.logit_mixing - shape[:, 3]) / self.prior.logit_mixing_scale,
-                np.full(self.n, self.prior.logit_mixing_scale),
-            ),
-            (
-                np.array([PER_LINE * self.n]),
-                np.array(
-                    [
-                        (np.log(self.prior.doublet_ratio) - parameters[PER_LINE * self.n])
-                        / self.prior.doublet_scale
-                    ]
-                ),
-                np.array([self.prior.doublet_scale]),
-            ),
+        prior = self.prior
+        row = np.arange(self.n)
+        slope[PER_LINE * row + 2, row] = 1.0 / prior.ln_fwhm_scale
+        slope[PER_LINE * row + 3, self.n + row] = 1.0 / prior.logit_mixing_scale
+        slope[PER_LINE * self.n, 2 * self.n] = 1.0 / prior.doublet_scale
+        return np.concatenate(
+            [
+                (prior.ln_fwhm - shape[:, 2]) / prior.ln_fwhm_scale,
+                (prior.logit_mixing - shape[:, 3]) / prior.logit_mixing_scale,
+                [(np.log(prior.doublet_ratio) - parameters[PER_LINE * self.n]) / prior.doublet_scale],
+            ]
         )
-        residual = np.concatenate([block[1] for block in blocks])
-        slope = np.zeros((len(residual), len(parameters)))
-        row = 0
-        for columns, _, scale in blocks:
-            slope[np.arange(row, row + len(columns)), columns] = 1.0 / scale
-            row += len(columns)
-        return residual, slope
 
     def within(self, parameters: FloatArray) -> FloatArray:
         """Keep lines near their start and shapes in reason."""
@@ -174,9 +162,8 @@ class _Problem:
         parameters[PER_LINE * self.n] = np.clip(parameters[PER_LINE * self.n], -5.0, 0.5)
         return parameters
 
-    def result(self, parameters: FloatArray, residual: FloatArray, jacobian: FloatArray) -> GroupFit:
+    def result(self, parameters: FloatArray, residual: FloatArray, normal: FloatArray) -> GroupFit:
         shape = parameters[: PER_LINE * self.n].reshape(self.n, PER_LINE)
-        normal = jacobian.T @ jacobian
         scale = np.sqrt(np.maximum(np.diag(normal), 1e-300))
         even = normal / np.outer(scale, scale) + 1e-12 * np.eye(len(scale))
         variance = np.diag(np.linalg.inv(even)) / scale**2

@@ -18,10 +18,30 @@ MAD_TO_SIGMA: Final = 1.4826
 
 @dataclass(frozen=True, slots=True)
 class Noise:
-    """Standard deviation of each point (n_points,) and where it comes from, in words."""
+    """Standard deviation of each point, where it comes from, and variance over intensity where that sets it.
+
+    Attributes
+    ----------
+    sigma : (n_points,)
+    origin : str, in words
+    gain : (n_points,) or None
+        None where the noise does not follow the intensity (stated, or a background was taken off).
+    """
 
     sigma: FloatArray
     origin: str
+    gain: FloatArray | None = None
+
+    def at_level(self, level: FloatArray) -> Noise:
+        """Return the noise of a scan whose expected intensity is `level`.
+
+        Noise from the counts themselves is low where they are low by chance, which pulls every weighted mean
+        down; the fitted curve has no such chance in it.
+        """
+        if self.gain is None:
+            return self
+        floor = 0.5 * self.gain
+        return Noise(np.sqrt(self.gain * np.maximum(level, 0.0) + floor * self.gain), self.origin, self.gain)
 
 
 def noise_of(scan: Scan) -> Noise:
@@ -35,8 +55,15 @@ def noise_of(scan: Scan) -> Noise:
     if scan.esd is not None:
         return Noise(scan.esd.copy(), "stated in the file")
     if _are_counts(scan.counts):
-        return Noise(np.sqrt(np.maximum(smooth, 0.0) + 0.5), "counting statistics")
-    return Noise(_from_scatter(scan.counts, smooth), "scatter of neighbouring points")
+        return Noise(np.ones_like(smooth), COUNTING, np.ones_like(smooth)).at_level(smooth)
+    gain = _gain_of_scatter(scan.counts, smooth)
+    if (scan.counts < 0).any():
+        return Noise(np.sqrt(gain), SCATTER)
+    return Noise(np.ones_like(smooth), SCATTER, gain).at_level(smooth)
+
+
+COUNTING: Final = "counting statistics"
+SCATTER: Final = "scatter of neighbouring points"
 
 
 def local_mean(values: FloatArray, width: int) -> FloatArray:
@@ -52,8 +79,11 @@ def _are_counts(counts: FloatArray) -> bool:
     return bool((counts >= 0).all() and np.mean(np.abs(counts - np.round(counts)) < 1e-6) > 0.999)
 
 
-def _from_scatter(counts: FloatArray, smooth: FloatArray) -> FloatArray:
-    """Return sigma with sigma² = gain(x) times intensity; a second difference has variance 6 sigma²."""
+def _gain_of_scatter(counts: FloatArray, smooth: FloatArray) -> FloatArray:
+    """Return variance / intensity along the scan (the variance where counts are negative).
+
+    From second differences, whose variance is six times that of a point.
+    """
     floor = max(float(np.median(np.abs(smooth))) * 1e-2, 1e-300)
     level = np.ones_like(counts) if (counts < 0).any() else np.maximum(smooth, floor)
     second = counts[:-2] - 2.0 * counts[1:-1] + counts[2:]
@@ -63,6 +93,5 @@ def _from_scatter(counts: FloatArray, smooth: FloatArray) -> FloatArray:
     gain = np.array([(MAD_TO_SIGMA * np.median(relative[piece])) ** 2 for piece in pieces])
     known = gain > 0
     if not known.any():
-        return np.full(len(counts), max(float(np.ptp(counts)) * 1e-6, 1e-300))
-    spread = np.exp(np.interp(np.arange(len(counts)), centre[known], np.log(gain[known])))
-    return np.asarray(np.sqrt(spread * level))
+        return np.full(len(counts), max(float(np.ptp(counts)) * 1e-6, 1e-300) ** 2 / floor)
+    return np.asarray(np.exp(np.interp(np.arange(len(counts)), centre[known], np.log(gain[known]))))

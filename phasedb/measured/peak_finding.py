@@ -13,7 +13,7 @@ from phasedb.measured.background import clipped_background, smooth_through
 from phasedb.measured.detection import Candidate, strongest_over_scales, threshold_for
 from phasedb.measured.fitting_lines import FittingLines
 from phasedb.measured.line_fit import ShapePrior, fit_group
-from phasedb.measured.noise import noise_of
+from phasedb.measured.noise import Noise, noise_of
 from phasedb.measured.peak_search import (
     RESOLVING_SCALE,
     SAME_LINE,
@@ -66,14 +66,8 @@ def find_lines(
     tell(0.1, "searching")
     search = _first_search(scan, noise.sigma, false_lines)
     if search.widths is None:
-        step = max(float(np.ptp(scan.two_theta_deg)) / 10.0, 1e-6)
-        level = smooth_through(scan.two_theta_deg, scan.counts, noise.sigma, step)
-        lines: tuple[FoundLine, ...] = ()
-        notes = (*scan.notes, "no line stands above the noise")
-        return ScanResult(
-            scan, level, level, noise.sigma, lines, false_lines, search.threshold, noise.origin, None, notes
-        )
-    fitting = _Fitting(scan, noise.sigma, search)
+        return _nothing(scan, noise, search.threshold, false_lines)
+    fitting = _Fitting(scan, noise, search)
     for number in range(ROUNDS):
         tell(0.2 + 0.2 * number, "fitting")
         fitting.fit_all()
@@ -83,7 +77,26 @@ def find_lines(
     tell(0.85, "fitting")
     fitting.fit_all()
     tell(1.0, "done")
-    return fitting.result(false_lines, noise.origin)
+    if not len(fitting.significant()):
+        return _nothing(scan, noise, search.threshold, false_lines)
+    return fitting.result(false_lines)
+
+
+def _nothing(scan: Scan, noise: Noise, threshold: float, false_lines: float) -> ScanResult:
+    step = max(float(np.ptp(scan.two_theta_deg)) / 10.0, 1e-6)
+    level = smooth_through(scan.two_theta_deg, scan.counts, noise.sigma, step)
+    return ScanResult(
+        scan=scan,
+        background=level,
+        model=level,
+        sigma=noise.sigma,
+        lines=(),
+        false_lines=false_lines,
+        threshold=threshold,
+        noise_origin=noise.origin,
+        doublet_ratio=None,
+        notes=(*scan.notes, "no line stands above the noise"),
+    )
 
 
 class _Search:
@@ -121,11 +134,11 @@ def _first_search(scan: Scan, sigma: FloatArray, false_lines: float) -> _Search:
 class _Fitting:
     """The rounds of fitting over one scan: holds what each step hands to the next."""
 
-    def __init__(self, scan: Scan, sigma: FloatArray, search: _Search) -> None:
+    def __init__(self, scan: Scan, noise: Noise, search: _Search) -> None:
         assert search.widths is not None
         self.scan = scan
         self.x = scan.two_theta_deg
-        self.sigma = sigma
+        self.noise = noise
         self.threshold = search.threshold
         self.widths = search.widths
         self.doublet = Doublet.of(scan.radiation)
@@ -147,7 +160,7 @@ class _Fitting:
         centre = np.sort(np.array([candidate.x for candidate in candidates]))
         fwhm = self.widths.at(centre)
         height = np.interp(centre, self.x, self.scan.counts - self.background - model)
-        height = np.maximum(height, np.interp(centre, self.x, self.sigma))
+        height = np.maximum(height, np.interp(centre, self.x, self.noise.sigma))
         mixing = 1.0 / (1.0 + np.exp(-self.logit_mixing))
         return FittingLines.started(centre, 1.2 * height * fwhm, fwhm, mixing=mixing)
 
@@ -158,7 +171,7 @@ class _Fitting:
         answers = answers_over(
             self.scan,
             self.scan.counts - self.background - model,
-            np.hypot(self.sigma, SHAPE_ERROR * model),
+            np.hypot(self.noise.sigma, SHAPE_ERROR * model),
             widest_deg=float(widths.max()),
             narrowest_deg=0.5 * RESOLVING_SCALE * float(widths.min()),
         )
@@ -167,9 +180,19 @@ class _Fitting:
             candidate
             for candidate in at_own_width(answers, self.threshold, self.widths, self.doublet)
             if (np.abs(self.lines.centre - candidate.x) > SAME_LINE * widest).all()
+            and not self.is_misfit_of_alpha2(candidate, self.scan.counts - self.background - model)
         ]
         if new:
             self.lines = self.lines.joined(self.started(new, model))
+
+    def is_misfit_of_alpha2(self, candidate: Candidate, left: FloatArray) -> bool:
+        """Return whether what is left there is a small part of a fitted line's K-alpha2."""
+        if self.doublet is None:
+            return False
+        lines = self.lines
+        near = np.abs(lines.alpha2(self.doublet) - candidate.x) < 0.5 * lines.fwhm
+        height = lines.area * pseudo_voigt_height(lines.fwhm, lines.mixing)
+        return bool((near & (np.interp(candidate.x, self.x, left) < 0.5 * height)).any())
 
     def fit_all(self) -> None:
         """Fit every group until no two lines run together, then draw the background anew."""
@@ -196,7 +219,7 @@ class _Fitting:
             fit = fit_group(
                 x,
                 self.scan.counts[inside] - self.background[inside] - others,
-                self.sigma[inside],
+                self.noise.sigma[inside],
                 centre=own.centre,
                 area=own.area,
                 prior=self.shape_prior(own.centre),
@@ -229,7 +252,7 @@ class _Fitting:
     def redraw_background(self) -> None:
         model = self.lines.model(self.x, self.doublet)
         left = self.scan.counts - model
-        sigma = np.hypot(self.sigma, SHAPE_ERROR * model)
+        sigma = np.hypot(self.noise.sigma, SHAPE_ERROR * model)
         for first, end in self.scan.segments:
             keep = self.scan.usable[first:end]
             if int(keep.sum()) < SHORTEST_SEGMENT:
@@ -239,6 +262,7 @@ class _Fitting:
             spacing = max(3.0 * float(np.median(self.widths.at(x))), 12.0 * step)
             curve = smooth_through(x[keep], left[first:end][keep], sigma[first:end][keep], spacing)
             self.background[first:end] = np.interp(x, x[keep], curve)
+        self.noise = self.noise.at_level(self.background + model)
 
     def learn_shapes(self) -> None:
         """Learn width and Lorentzian share as smooth functions of angle, and what the doublet is."""
@@ -265,6 +289,8 @@ class _Fitting:
         lines = self.lines
         start = moved_by_ratio(lines.centre, self.doublet.ratio_alpha1)[0]
         resolved = strong & (lines.alpha2(self.doublet) - start > RESOLVED * lines.fwhm)
+        for place in self.x[~self.scan.usable]:
+            resolved &= np.abs(lines.centre - place) > 2.0 * lines.fwhm
         if resolved.any():
             self.doublet_ratio = float(np.median(lines.ratio[resolved]))
         if not self.doublet.is_certain:
@@ -283,7 +309,7 @@ class _Fitting:
             inside |= (lines.centre >= self.x[first]) & (lines.centre <= self.x[end - 1])
         return lines.taken(keep & inside)
 
-    def result(self, false_lines: float, noise_origin: str) -> ScanResult:
+    def result(self, false_lines: float) -> ScanResult:
         lines = self.significant()
         height = lines.area * pseudo_voigt_height(lines.fwhm, lines.mixing)
         columns = (
@@ -305,17 +331,15 @@ class _Fitting:
                 "given is the mean; unless the angles were calibrated with it, give --radiation "
                 f"{radiation.anode}"
             )
-        if not len(lines):
-            notes.append("no line stands above the noise")
         return ScanResult(
             scan=self.scan,
             background=self.background,
             model=self.background + lines.model(self.x, self.doublet),
-            sigma=self.sigma,
+            sigma=self.noise.sigma,
             lines=tuple(FoundLine(*(float(value) for value in row)) for row in zip(*columns, strict=True)),
             false_lines=false_lines,
             threshold=self.threshold,
-            noise_origin=noise_origin,
+            noise_origin=self.noise.origin,
             doublet_ratio=None if self.doublet is None else self.doublet_ratio,
             notes=tuple(notes),
         )
