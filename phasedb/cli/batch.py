@@ -112,7 +112,7 @@ def _plan(ctx: click.Context, measured: PeakOptions, asked: MatchOptions, *, ful
         store=said.store,
         by=said.by,
         asked=asked,
-        reading=measured.read_options(ctx),
+        reading=measured.reading(ctx),
         settings=asked.settings(library, measured.shift_prior(ctx)),
         fingerprint=library.fingerprint,
         full=full,

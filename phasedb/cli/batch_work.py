@@ -12,11 +12,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final
 
 from phasedb.cli.matching import MatchOptions, TableOnce, foreign_positions, run_match
+from phasedb.cli.peak_options import Reading
 from phasedb.errors import InputError, PhasedbError, StoreError
 
 if TYPE_CHECKING:
     from phasedb.identify.settings import MatchSettings
-    from phasedb.measured.options import ReadOptions
     from phasedb.measured.peaklist import PeakList
 
 _AHEAD: Final = 4  # lists handed out for each worker: enough to keep it busy, few enough to keep memory flat
@@ -29,7 +29,7 @@ class Plan:
     store: str | None
     by: str | None
     asked: MatchOptions
-    reading: ReadOptions
+    reading: Reading
     settings: MatchSettings
     fingerprint: str
     full: bool
@@ -49,14 +49,13 @@ class Bench:
 
     def __init__(self, plan: Plan) -> None:
         from phasedb.library import Library
-        from phasedb.measured.reading import read_peak_list
 
         self.plan = plan
         self._library = Library.open(plan.store, by=plan.by, as_of=plan.asked.as_of)
         self._source = TableOnce(self._library)
         self._foreign: PeakList | None = None
         if plan.asked.foreign is not None:
-            self._foreign = read_peak_list(plan.asked.foreign, plan.reading)
+            self._foreign = plan.reading.read(plan.asked.foreign)
 
     def close(self) -> None:
         """Close the library."""
@@ -72,14 +71,13 @@ class Bench:
         """
         from dataclasses import replace
 
-        from phasedb.measured.reading import read_peak_list
         from phasedb.report.batch_table import failed_row, matched_row
 
         if self._source.fingerprint != self.plan.fingerprint:
             raise StoreError("the library changed while the batch began", hint="run the same command again")
         record: dict[str, Any] = {"file": item.file, "sha256": item.sha256}
         try:
-            peaks = read_peak_list(item.path, self.plan.reading)
+            peaks = self.plan.reading.read(item.path)
             settings = self.plan.settings
             if self._foreign is not None:
                 settings = replace(settings, foreign_positions=foreign_positions(self._foreign, peaks))

@@ -187,15 +187,23 @@ def _starting_cell(
 @click.command(
     epilog=examples(
         "phasedb index unknown.csv --radiation Cu",
-        "phasedb index mixture.csv --left-over",
+        "phasedb index mixture.csv --left-over --figure axis.svg",
     )
 )
 @click.argument("peaks_file", metavar="PEAKS", type=click.Path())
 @peak_options
 @click.option("--left-over", is_flag=True, help="Index only the lines that no stored phase claims.")
+@click.option("--figure", metavar="FILE", help="Also draw the axis of a: .svg, .png or .pdf.")
 @json_option
 @click.pass_context
-def index(ctx: click.Context, peaks_file: str, measured: PeakOptions, left_over: bool, as_json: bool) -> None:
+def index(
+    ctx: click.Context,
+    peaks_file: str,
+    measured: PeakOptions,
+    left_over: bool,
+    figure: str | None,
+    as_json: bool,
+) -> None:
     """Find lattice type and lattice constant from a peak list alone.
 
     Every lattice type is tried over the whole axis of a. Cells that the list cannot exclude are named, with
@@ -203,12 +211,21 @@ def index(ctx: click.Context, peaks_file: str, measured: PeakOptions, left_over:
     """
     from phasedb.characterise.indexing import index_lines
 
+    if figure is not None:
+        from phasedb.report.drawing import figure_format
+
+        figure_format(Path(figure))
     peaks = measured.read(ctx, peaks_file)
     if left_over:
         peaks = lines_left_over(open_library(ctx), peaks, measured.shift_prior(ctx))
     found = index_lines(peaks, shift_prior=measured.shift_prior(ctx))
     from phasedb.report.indexing import index_document, index_text
 
+    if figure is not None:
+        from phasedb.report.figures import index_figure
+
+        index_figure(found, Path(figure))
+        note(f"figure written to {figure}")
     if as_json:
         print_json(index_document(found, peaks))
     else:

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
+    from phasedb.crystal.lattice import LatticeType
     from phasedb.crystal.phases import PhaseTable
     from phasedb.identify.result import Match
     from phasedb.identify.settings import MatchSettings, ShiftPrior
@@ -147,6 +148,21 @@ class TableOnce:
         if checked_only not in self._tables:
             self._tables[checked_only] = self.library.table(checked_only=checked_only)
         return self._tables[checked_only]
+
+    def within(
+        self,
+        lattice: LatticeType,
+        a_low: float,
+        a_high: float,
+        *,
+        centre: float | None = None,
+        limit: int,
+        checked_only: bool = False,
+    ) -> tuple[PhaseTable, int]:
+        """Return the entries of one lattice type in a range of a (Å); see `Library.within`."""
+        return self.library.within(
+            lattice, a_low, a_high, centre=centre, limit=limit, checked_only=checked_only
+        )
 
 
 def run_match(peaks: PeakList, source: TableOnce, settings: MatchSettings) -> Match:

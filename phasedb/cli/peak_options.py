@@ -69,19 +69,21 @@ class PeakOptions:
 
     def read(self, ctx: click.Context, path: str) -> PeakList:
         """Return the peak list at `path` (``-`` is standard input)."""
-        from phasedb.measured.reading import read_peak_list
+        return self.reading(ctx).read(path)
 
+    def reading(self, ctx: click.Context) -> Reading:
+        """Return how to read any list measured so, the camera calibrated if a standard's rings are given."""
         options = self.read_options(ctx)
         if self.calibration_rings is None and self.calibration_phase is None:
-            return read_peak_list(path, options)
-        return self._read_calibrated(ctx, path, options)
+            return Reading(options)
+        return self._calibrated(ctx, options)
 
-    def _read_calibrated(self, ctx: click.Context, path: str, options: ReadOptions) -> PeakList:
-        """Return the ring list at `path` with the camera calibrated from a standard film's rings."""
+    def _calibrated(self, ctx: click.Context, options: ReadOptions) -> Reading:
+        """Return the reading of ring lists with the camera calibrated from a standard film's rings."""
         from phasedb.characterise.camera import calibrate_camera
         from phasedb.characterise.cells import cell_from_phase
         from phasedb.errors import InputError
-        from phasedb.measured.reading import read_peak_list, read_ring_radii
+        from phasedb.measured.reading import read_ring_radii
 
         if self.calibration_rings is None or self.calibration_phase is None:
             raise InputError(
@@ -105,8 +107,34 @@ class PeakOptions:
             camera_length_mm=found.camera_length_mm,
             camera_constant_mm_angstrom=found.camera_constant_mm_angstrom,
         )
-        peaks = read_peak_list(path, calibrated)
-        return replace(peaks, scale_esd_relative=found.esd_relative, notes=(*peaks.notes, found.text))
+        return Reading(calibrated, found.esd_relative, found.text)
+
+
+@dataclass(frozen=True, slots=True)
+class Reading:
+    """How the lists of one set-up are read; it can be handed to another process.
+
+    Attributes
+    ----------
+    options : ReadOptions
+    scale_esd_relative : float or None
+        Of a calibrated camera.
+    remark : str
+        What the calibration said; empty without one.
+    """
+
+    options: ReadOptions
+    scale_esd_relative: float | None = None
+    remark: str = ""
+
+    def read(self, path: str) -> PeakList:
+        """Return the peak list at `path` (``-`` is standard input)."""
+        from phasedb.measured.reading import read_peak_list
+
+        peaks = read_peak_list(path, self.options)
+        if self.scale_esd_relative is None:
+            return peaks
+        return replace(peaks, scale_esd_relative=self.scale_esd_relative, notes=(*peaks.notes, self.remark))
 
 
 def peak_options(command: _Command) -> _Command:

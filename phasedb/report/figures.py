@@ -11,11 +11,14 @@ from typing import TYPE_CHECKING, Final
 from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType
 from phasedb.identify.result import AxisCurve, Claim, LedgerLine, Match
 from phasedb.report import drawing, wording
+from phasedb.report.document import thinned
 from phasedb.report.drawing import FOREIGN_MARK, INK, UNLISTED_MARK, Mark
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+
+    from phasedb.characterise.indexing import IndexResult
 
 WIDE: Final = (9.4, 5.6)
 NARROW: Final = (4.4, 5.6)
@@ -328,3 +331,21 @@ def match_figure(match: Match, path: Path) -> None:
     drawing.figure_format(path)
     with drawing.look():
         drawing.save_figure(lines_figure(match), path)
+
+
+def index_figure(found: IndexResult, path: Path) -> None:
+    """Write the axis of an indexing as .svg, .png or .pdf, its solutions labelled with a and probability."""
+    drawing.figure_format(path)
+    named = [
+        (
+            f"{wording.lattice_constant(solution.a_angstrom, solution.a_esd_angstrom)} Å,"
+            f" p {wording.probability(solution.probability)}",
+            solution.lattice_type,
+            solution.a_angstrom,
+            drawing.mark_for(rank),
+        )
+        for rank, solution in enumerate(found.solutions[: len(drawing.MARKS)])
+        if solution.probability >= 0.01
+    ]
+    with drawing.look():
+        drawing.save_figure(axis_figure([thinned(curve) for curve in found.axis], (), named), path)

@@ -16,7 +16,7 @@ from phasedb.cli import COMMANDS
 
 
 def examples_in(text):
-    """Return the words of each example in a help text, without `phasedb` and the options before the command."""
+    """Return the words of each example in a help text, from the command on."""
     found = []
     for line in text.split("Examples:")[1].splitlines():
         words = shlex.split(line)
