@@ -192,7 +192,7 @@ def _expected_by_chance(axis: Axis, fit: Fitted, lattice: int, ln_a: float) -> f
     cell = Cell(fit.shift_terms, float(np.exp(fit.ln_sigma)), 0.0)
     curve = vote(axis, cell, base, np.zeros(len(axis.x)))
     grid = curve.start + curve.step * np.arange(curve.values.shape[1])
-    score = float(curve.values[lattice][np.abs(grid - ln_a) < max(3 * curve.step, 1.5e-3)].max())
+    score = float(curve.values[lattice][np.abs(grid - ln_a) < max(3 * curve.step, 1.5e-3)].max(initial=0.0))
     total = 0.0
     for row in range(len(LATTICE_TYPES)):
         # places that share part of the line sequence are relatives, not luck

@@ -86,7 +86,7 @@ def refine(
     )
     if not len(found.line):
         raise InputError(
-            f"no line of the list is a line of a {lattice_type} phase with a near {a_angstrom:g} Å",
+            f"no line of the list fits lattice type {lattice_type} with a near {a_angstrom:g} Å",
             where=peaks.source,
             hint="check lattice type and a; find them from the list alone with: phasedb index PEAKS",
         )
