@@ -9,6 +9,7 @@ import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 from math import gcd, lcm
 from typing import Final, NoReturn
 
@@ -251,6 +252,7 @@ def _canonical(counts: Mapping[str, Fraction | int]) -> str:
     )
 
 
+@lru_cache(maxsize=8192)  # one entry's formula is asked for several times on its way into a library
 def parse_formula(text: str) -> Formula:
     """Return the parsed formula.
 

@@ -94,8 +94,8 @@ def _neighbours(columns: _Columns, fresh: Sequence[Prepared]) -> Iterator[tuple[
     ln_a: Floats = np.log(a)
     by_formula: Floats = 1000.0 * formula + ln_a
     slip = float(np.log(KX_IN_ANGSTROM))
-    pairs = np.unique(np.concatenate([_beside(ln_a, n, 0.0), _beside(by_formula, n, 0.0)]), axis=0)
-    slips = np.unique(np.concatenate([_beside(by_formula, n, move) for move in (slip, -slip)]), axis=0)
+    pairs = _each_once([_beside(ln_a, n, 0.0), _beside(by_formula, n, 0.0)], len(a))
+    slips = _each_once([_beside(by_formula, n, move) for move in (slip, -slip)], len(a))
     named: dict[int, list[Warned]] = defaultdict(list)
     one, other = slips.T
     apart = (formula[one] == formula[other]) & _is_kx_apart(a[one] / a[other])
@@ -107,6 +107,12 @@ def _neighbours(columns: _Columns, fresh: Sequence[Prepared]) -> Iterator[tuple[
     for i in sorted(named):
         for warning in named[i]:
             yield i - n, warning
+
+
+def _each_once(pairs: Sequence[Ints], size: int) -> Ints:
+    """Return the pairs in order, each once; as single numbers they sort quickly."""
+    one, other = np.concatenate(pairs).T
+    return np.stack(np.divmod(np.unique(one * size + other), size), axis=1)
 
 
 def _is_kx_apart(ratio: Floats) -> NDArray[np.bool_]:

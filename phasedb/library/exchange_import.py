@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+import gc
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final, Literal, get_args
@@ -123,7 +125,23 @@ def import_files(
     InputError
         If a file as a whole cannot be read.
     """
-    say = progress or _silent
+    with _no_collector():
+        return _import(library, files, skip_bad=skip_bad, say=progress or _silent)
+
+
+@contextmanager
+def _no_collector() -> Iterator[None]:
+    """Keep the cycle collector off: it would walk through all rows read so far again and again."""
+    was_on = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if was_on:
+            gc.enable()
+
+
+def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say: Progress) -> Imported:
     read = _Read()
     for file in files:
         _read_file(file, read, say)

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 from functools import lru_cache
 from typing import Final
 
-from phasedb.crystal.lattice import check_lattice_type
+from phasedb.crystal.lattice import LatticeType, check_lattice_type
 from phasedb.crystal.phases import DRIFT_CLASSES, Structure
 from phasedb.errors import InputError
 from phasedb.library.cleaning import clean_name, clean_text, within
@@ -119,34 +119,45 @@ def canonical_type(text: str | None) -> str | None:
 
 def _with_sites(content: Draft) -> tuple[Draft, str]:
     """Return the content with the sites of its structure type, and what is wrong with the type (or "")."""
-    from phasedb.crystal.structure import check_structure
-
-    try:
-        structure = _structure_of(content)
-        if structure is None:
-            return content, ""
-        check_structure(structure, content.lattice_type)
-    except InputError as error:
-        return replace(content, sites=(), assumed=()), str(error)
+    if content.structure_type is None:
+        return content, ""
+    structure, problem = _structure_of(
+        content.structure_type,
+        content.formula,
+        content.free_parameters,
+        content.space_group,
+        content.lattice_type,
+    )
+    if problem:
+        return replace(content, sites=(), assumed=()), problem
+    if structure is None:
+        return content, ""
     return (
         replace(content, sites=structure.sites, assumed=structure.assumed, space_group=structure.space_group),
         "",
     )
 
 
-def _structure_of(content: Draft) -> Structure | None:
-    """Return the structure that a known type gives, or space group and sites of an own type; else None."""
+@lru_cache(maxsize=4096)
+def _structure_of(
+    structure_type: str, formula: str, given: str, space_group: str, lattice_type: LatticeType
+) -> tuple[Structure | None, str]:
+    """Return the structure that a known type gives, or space group and sites of an own type; and a problem."""
     from phasedb.crystal.own_type import is_complete, structure_from_sites
+    from phasedb.crystal.structure import check_structure
     from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
 
-    given = content.free_parameters
-    if content.structure_type is None:
-        return None
-    if resolve_structure_type(content.structure_type) is not None:
-        return structure_from_type(content.structure_type, content.formula, free_parameters=given or None)
-    if content.space_group and is_complete(given, content.formula):
-        return structure_from_sites(content.space_group, given, content.formula)
-    return None
+    try:
+        if resolve_structure_type(structure_type) is not None:
+            structure = structure_from_type(structure_type, formula, free_parameters=given or None)
+        elif space_group and is_complete(given, formula):
+            structure = structure_from_sites(space_group, given, formula)
+        else:
+            return None, ""
+        check_structure(structure, lattice_type)
+    except InputError as error:
+        return None, str(error)
+    return structure, ""
 
 
 def entry_of(prepared: Prepared, *, uid: str, by: str, at: str) -> Entry:
