@@ -222,7 +222,7 @@ def index(
     from phasedb.report.indexing import index_document, index_text
 
     if figure is not None:
-        from phasedb.report.figures import index_figure
+        from phasedb.report.axis_figure import index_figure
 
         index_figure(found, Path(figure))
         note(f"figure written to {figure}")

@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from phasedb.crystal.phases import PhaseTable
     from phasedb.identify.result import Match
     from phasedb.library import Library
-    from phasedb.report.figures import Entry
+    from phasedb.report.axis_figure import Entry
 
 _DETAILS = (
     ("laboratory", "Laboratory and its address."),
@@ -129,7 +129,7 @@ def _page(
 
 def _entries(table: PhaseTable) -> list[Entry]:
     from phasedb.crystal.lattice import LATTICE_TYPES
-    from phasedb.report.figures import Entry
+    from phasedb.report.axis_figure import Entry
 
     return [
         Entry(name, LATTICE_TYPES[lattice], a)

@@ -18,6 +18,9 @@ if TYPE_CHECKING:
 INK: Final = "#1b2530"
 FAINT: Final = "#8a939c"
 
+WIDE: Final = (9.4, 5.6)
+NARROW: Final = (4.4, 5.6)  # for narrow screens
+
 FORMATS: Final = ("svg", "png", "pdf")
 
 

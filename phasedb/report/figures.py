@@ -1,37 +1,21 @@
-"""Figures of a match: its lines with their deviations, and the lattice-constant axis."""
+"""The figure of a match: its lines with their deviations, each phase with its mark."""
 
 from __future__ import annotations
 
-import math
-from collections.abc import Sequence
-from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
-from phasedb.crystal.lattice import LATTICE_TYPES, LatticeType
-from phasedb.identify.result import AxisCurve, Claim, LedgerLine, Match
+from phasedb.crystal.lattice import LatticeType
+from phasedb.identify.result import Claim, LedgerLine, Match
 from phasedb.report import drawing, wording
-from phasedb.report.document import thinned
-from phasedb.report.drawing import FOREIGN_MARK, INK, UNLISTED_MARK, Mark
+from phasedb.report.drawing import FOREIGN_MARK, INK, UNLISTED_MARK, WIDE, Mark
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
 
-    from phasedb.characterise.indexing import IndexResult
 
-WIDE: Final = (9.4, 5.6)
-NARROW: Final = (4.4, 5.6)
 _LABELLED: Final = 40  # with more lines than this only the phase marks are drawn, no hkl
-
-
-@dataclass(frozen=True, slots=True)
-class Entry:
-    """A library entry as the axis figure needs it."""
-
-    name: str
-    lattice_type: LatticeType
-    a_angstrom: float
 
 
 def phase_marks(match: Match) -> dict[str, Mark]:
@@ -213,99 +197,6 @@ def _deviations(axes: Axes, match: Match, marks: dict[str, Mark]) -> None:
     drawing.light_grid(axes)
 
 
-def axis_figure(
-    curves: Sequence[AxisCurve],
-    entries: Sequence[Entry] = (),
-    named: Sequence[tuple[str, LatticeType, float, Mark]] = (),
-    size: tuple[float, float] = WIDE,
-) -> Figure:
-    """Return the figure of the lattice-constant axis: evidence over ln a for each lattice type.
-
-    Parameters
-    ----------
-    curves : sequence of AxisCurve
-    entries : sequence of Entry
-        The library's entries, small marks under each curve.
-    named : sequence of (label, lattice type, a in Å, Mark)
-        What is labelled: the phases found, the unlisted one.
-    size : (width, height) in inches
-    """
-    figure = drawing.new_figure(*size)
-    rows: list[Axes] = list(figure.subplots(len(LATTICE_TYPES), 1, sharex=True, sharey=True))
-    by_lattice = {curve.lattice_type: curve for curve in curves}
-    ends = [math.exp(end) for curve in curves for end in (curve.ln_a[0], curve.ln_a[-1])] or [2.5, 25.0]
-    top = max((max(curve.log_evidence) for curve in curves), default=1.0)
-    for axes, lattice in zip(rows, LATTICE_TYPES, strict=True):
-        _axis_row(axes, lattice, by_lattice.get(lattice), entries, top)
-        _axis_labels(axes, [entry for entry in named if entry[1] == lattice], by_lattice.get(lattice), top)
-    low, high = min(ends), max(ends)
-    rows[-1].set_xscale("log")
-    rows[-1].set_xlim(low, high)
-    ticks = [
-        tick for tick in (2, 2.5, 3, 3.5, 4, 5, 6, 7, 8, 10, 12, 15, 20, 25, 30, 40) if low <= tick <= high
-    ]
-    rows[-1].set_xticks(ticks, [f"{tick:g}" for tick in ticks])
-    rows[-1].minorticks_off()
-    rows[-1].set_xlabel("lattice constant a, Å (logarithmic)")
-    rows[len(rows) // 2].set_ylabel("evidence against chance, natural log")
-    return figure
-
-
-def _axis_row(
-    axes: Axes, lattice: LatticeType, curve: AxisCurve | None, entries: Sequence[Entry], top: float
-) -> None:
-    if curve is not None:
-        a = [math.exp(value) for value in curve.ln_a]
-        floor = [max(value, -0.2 * top) for value in curve.log_evidence]
-        axes.fill_between(a, floor, -0.2 * top, color="#e8ebee", linewidth=0)
-        axes.plot(a, floor, color=INK, linewidth=0.7, gid=f"curve-{lattice}")
-    axes.axhline(0.0, color=FAINT_LINE, linewidth=0.5)
-    here = [entry.a_angstrom for entry in entries if entry.lattice_type == lattice]
-    axes.vlines(here, -0.34 * top, -0.24 * top, color=INK, linewidth=0.5, alpha=0.7, gid=f"entries-{lattice}")
-    axes.set_ylim(-0.36 * top, 1.45 * top)
-    axes.set_title(
-        f"{lattice}, {wording.LATTICE_WORDS[lattice]}", loc="left", fontsize=9, fontweight="bold", pad=2
-    )
-
-
-FAINT_LINE: Final = "#b9c0c6"
-
-
-def _height_at(curve: AxisCurve | None, a_angstrom: float) -> float:
-    """The curve's highest value close to a (0.2 %), where its label is to stand."""
-    if curve is None:
-        return 0.0
-    place = math.log(a_angstrom)
-    near = [v for x, v in zip(curve.ln_a, curve.log_evidence, strict=True) if abs(x - place) < 2e-3]
-    return max([*near, 0.0])
-
-
-def _axis_labels(
-    axes: Axes, named: Sequence[tuple[str, LatticeType, float, Mark]], curve: AxisCurve | None, top: float
-) -> None:
-    for label, _, a, mark in named:
-        height = _height_at(curve, a)
-        axes.plot(
-            [a],
-            [height + 0.1 * top],
-            mark.shape,
-            color=mark.colour,
-            markersize=6,
-            gid=f"phase-{mark.letter}-axis",
-        )
-        axes.plot(
-            [a, a], [-0.34 * top, height], color=mark.colour, linewidth=1.0, gid=f"phase-{mark.letter}-place"
-        )
-        axes.annotate(
-            f"{mark.letter} {drawing.shortened(label)}",
-            (a, height + 0.1 * top),
-            xytext=(6, 3),
-            textcoords="offset points",
-            fontsize=8,
-            gid=f"phase-{mark.letter}-label",
-        )
-
-
 def named_places(match: Match) -> list[tuple[str, LatticeType, float, Mark]]:
     """Return what the axis figure labels: the marked phases and the unlisted one, each at its fitted a."""
     marks = phase_marks(match)
@@ -331,21 +222,3 @@ def match_figure(match: Match, path: Path) -> None:
     drawing.figure_format(path)
     with drawing.look():
         drawing.save_figure(lines_figure(match), path)
-
-
-def index_figure(found: IndexResult, path: Path) -> None:
-    """Write the axis of an indexing as .svg, .png or .pdf, its solutions labelled with a and probability."""
-    drawing.figure_format(path)
-    named = [
-        (
-            f"{wording.lattice_constant(solution.a_angstrom, solution.a_esd_angstrom)} Å,"
-            f" p {wording.probability(solution.probability)}",
-            solution.lattice_type,
-            solution.a_angstrom,
-            drawing.mark_for(rank),
-        )
-        for rank, solution in enumerate(found.solutions[: len(drawing.MARKS)])
-        if solution.probability >= 0.01
-    ]
-    with drawing.look():
-        drawing.save_figure(axis_figure([thinned(curve) for curve in found.axis], (), named), path)

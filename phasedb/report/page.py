@@ -11,9 +11,9 @@ from typing import Any, Final
 
 from phasedb.identify.result import Match
 from phasedb.report import drawing, figures, wording
+from phasedb.report.axis_figure import Entry, axis_figure
 from phasedb.report.cautions import CAUTIONS
 from phasedb.report.document import document_bytes, match_document, thinned
-from phasedb.report.figures import Entry
 from phasedb.report.inline_svg import inline_svg
 from phasedb.report.page_rows import line_rows, phase_rows
 from phasedb.report.table import printable
@@ -201,13 +201,13 @@ def _pictures(match: Match, facts: PageFacts) -> dict[str, str]:
         entries = entries[:: len(entries) // _MOST_ENTRY_MARKS + 1]
     places = figures.named_places(match)
     with drawing.look():
-        for name, size in (("wide", figures.WIDE), ("narrow", figures.NARROW)):
+        for name, size in (("wide", drawing.WIDE), ("narrow", drawing.NARROW)):
             lines = figures.lines_figure(match, size)
             pictures[f"lines_{name}"] = inline_svg(
                 lines, f"lines-{name}", "Measured lines and their deviations"
             )
             if match.axis:
-                axis = figures.axis_figure([thinned(curve) for curve in match.axis], entries, places, size)
+                axis = axis_figure([thinned(curve) for curve in match.axis], entries, places, size)
                 pictures[f"axis_{name}"] = inline_svg(
                     axis, f"axis-{name}", "Evidence along the lattice-constant axis"
                 )

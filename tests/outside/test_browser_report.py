@@ -10,7 +10,7 @@ import pytest
 from browser import CHROMIUM, Browser
 from report.samples import d_only_match, hostile_match, nothing_match, two_phase_match, unlisted_match
 
-from phasedb.report.figures import Entry
+from phasedb.report.axis_figure import Entry
 from phasedb.report.page import PageFacts, ReportDetails, report_page
 
 pytestmark = [

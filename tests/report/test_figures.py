@@ -13,11 +13,9 @@ from report.samples import d_only_match, hostile_match, nothing_match, two_phase
 
 from phasedb.errors import InputError
 from phasedb.report import drawing
+from phasedb.report.axis_figure import Entry, axis_figure
+from phasedb.report.drawing import NARROW, WIDE
 from phasedb.report.figures import (
-    NARROW,
-    WIDE,
-    Entry,
-    axis_figure,
     leading_claim,
     lines_figure,
     match_figure,

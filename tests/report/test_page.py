@@ -18,8 +18,8 @@ from report.samples import (
     unlisted_match,
 )
 
+from phasedb.report.axis_figure import Entry
 from phasedb.report.document import match_document
-from phasedb.report.figures import Entry
 from phasedb.report.page import PageFacts, ReportDetails, report_page
 from phasedb.report.stored import match_from_document
 from phasedb.report.table import printable
