@@ -107,8 +107,12 @@ def open_sqlite(path: Path, *, write: bool) -> sqlite3.Connection:
         isolation_level=None,
         check_same_thread=False,
     )
-    connection.execute("PRAGMA foreign_keys=ON")
-    connection.execute("PRAGMA synchronous=FULL")
+    try:
+        connection.execute("PRAGMA foreign_keys=ON")
+        connection.execute("PRAGMA synchronous=FULL")
+    except sqlite3.Error:
+        connection.close()
+        raise
     return connection
 
 

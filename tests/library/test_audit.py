@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sqlite3
+from contextlib import closing
 from pathlib import Path
 
 import pytest
@@ -33,11 +34,9 @@ def _faults(store: str, expect: str | None = None) -> str:
 
 
 def _edit(store: str, *statements: str) -> None:
-    connection = sqlite3.connect(store)
-    with connection:
+    with closing(sqlite3.connect(store)) as connection, connection:
         for statement in statements:
             connection.execute(statement)
-    connection.close()
 
 
 _NO_TRIGGERS = ("DROP TRIGGER history_no_update", "DROP TRIGGER history_no_delete")
