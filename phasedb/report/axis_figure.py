@@ -54,11 +54,13 @@ def axis_figure(
     rows: list[Axes] = list(figure.subplots(len(LATTICE_TYPES), 1, sharex=True, sharey=True))
     by_lattice = {curve.lattice_type: curve for curve in curves}
     ends = [math.exp(end) for curve in curves for end in (curve.ln_a[0], curve.ln_a[-1])] or [2.5, 25.0]
+    low, high = min(ends), max(ends)
+    character = 0.0075 * WIDE[0] / size[0] * math.log(high / low)
     top = max((max(curve.log_evidence) for curve in curves), default=1.0)
     for axes, lattice in zip(rows, LATTICE_TYPES, strict=True):
         _axis_row(axes, lattice, by_lattice.get(lattice), entries, top)
-        _axis_labels(axes, [entry for entry in named if entry[1] == lattice], by_lattice.get(lattice), top)
-    low, high = min(ends), max(ends)
+        here = [place for place in named if place[1] == lattice]
+        _axis_labels(axes, here, by_lattice.get(lattice), top, character)
     rows[-1].set_xscale("log")
     rows[-1].set_xlim(low, high)
     ticks = [tick for tick in _TICKS if low <= tick <= high]
@@ -80,7 +82,7 @@ def _axis_row(
     axes.axhline(0.0, color=FAINT_LINE, linewidth=0.5)
     here = [entry.a_angstrom for entry in entries if entry.lattice_type == lattice]
     axes.vlines(here, -0.34 * top, -0.24 * top, color=INK, linewidth=0.5, alpha=0.7, gid=f"entries-{lattice}")
-    axes.set_ylim(-0.36 * top, 1.45 * top)
+    axes.set_ylim(-0.36 * top, 1.3 * top)
     axes.set_title(
         f"{lattice}, {wording.LATTICE_WORDS[lattice]}", loc="left", fontsize=9, fontweight="bold", pad=2
     )
@@ -96,29 +98,42 @@ def _height_at(curve: AxisCurve | None, a_angstrom: float) -> float:
 
 
 def _axis_labels(
-    axes: Axes, named: Sequence[tuple[str, LatticeType, float, Mark]], curve: AxisCurve | None, top: float
+    axes: Axes,
+    named: Sequence[tuple[str, LatticeType, float, Mark]],
+    curve: AxisCurve | None,
+    top: float,
+    character: float,
 ) -> None:
-    for label, _, a, mark in named:
-        height = _height_at(curve, a)
-        axes.plot(
-            [a],
-            [height + 0.1 * top],
-            mark.shape,
-            color=mark.colour,
-            markersize=6,
-            gid=f"phase-{mark.letter}-axis",
-        )
+    """Mark each place above its peak and label it; a label that would run into another goes above it.
+
+    `character` is the width of a letter on the ln a axis.
+    """
+    taken: list[tuple[float, float, float]] = []  # from, to (ln a) and height of the labels so far
+    for label, _, a, mark in sorted(named, key=lambda place: place[2]):
+        peak = _height_at(curve, a) + 0.1 * top
+        text = f"{mark.letter} {drawing.shortened(label, 22)}"
+        start, end = math.log(a), math.log(a) + (len(text) + 3) * character
+        height = peak
+        while any(
+            start < right and left < end and abs(height - at) < 0.15 * top for left, right, at in taken
+        ):
+            height += 0.15 * top
+        taken.append((start, end, height))
         axes.plot(
             [a, a], [-0.34 * top, height], color=mark.colour, linewidth=1.0, gid=f"phase-{mark.letter}-place"
         )
+        axes.plot([a], [height], mark.shape, color=mark.colour, markersize=6, gid=f"phase-{mark.letter}-axis")
         axes.annotate(
-            f"{mark.letter} {drawing.shortened(label)}",
-            (a, height + 0.1 * top),
-            xytext=(6, 3),
+            text,
+            (a, height),
+            xytext=(6, 0),
             textcoords="offset points",
+            va="center",
             fontsize=8,
+            bbox={"facecolor": "#ffffff", "alpha": 0.7, "edgecolor": "none", "pad": 0.6},
             gid=f"phase-{mark.letter}-label",
         )
+    axes.set_ylim(top=max(1.3 * top, *(at + 0.12 * top for _, _, at in taken), 0.0))
 
 
 def index_figure(found: IndexResult, path: Path) -> None:

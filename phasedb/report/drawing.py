@@ -43,6 +43,7 @@ MARKS: Final = (
     Mark("E", "#e69f00", "v"),
     Mark("F", "#56b4e9", "P"),
 )
+_LETTERS: Final = "ABCDEFGHIJKLMNOPQRSTVWYZ"  # U and X mean something else
 UNLISTED_MARK: Final = Mark("U", "#000000", "*")
 FOREIGN_MARK: Final = Mark("X", FAINT, "x")
 
@@ -96,9 +97,8 @@ def shortened(text: str, most: int = 26) -> str:
 def mark_for(index: int) -> Mark:
     """Return the mark of the phase of that rank (from 0); after the sixth they repeat with new letters."""
     base = MARKS[index % len(MARKS)]
-    if index < len(MARKS):
-        return base
-    return Mark(f"{base.letter}{index // len(MARKS) + 1}", base.colour, base.shape)
+    turn, place = divmod(index, len(_LETTERS))
+    return Mark(_LETTERS[place] + (str(turn + 1) if turn else ""), base.colour, base.shape)
 
 
 def light_grid(axes: Axes) -> None:
