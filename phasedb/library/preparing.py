@@ -142,7 +142,7 @@ def _with_sites(content: Draft) -> tuple[Draft, str]:
 def _structure_of(
     structure_type: str, formula: str, given: str, space_group: str, lattice_type: LatticeType
 ) -> tuple[Structure | None, str]:
-    """Return the structure that a known type gives, or space group and sites of an own type; and a problem."""
+    """Return the structure of a known type, or of an own type with sites (else None), and a problem."""
     from phasedb.crystal.own_type import is_complete, structure_from_sites
     from phasedb.crystal.structure import check_structure
     from phasedb.crystal.structure_types import resolve_structure_type, structure_from_type
