@@ -374,9 +374,14 @@ class Assembler:
             scale_esd_relative=float(esd[0]) if not angle and not empty else None,
             goniometer_radius_mm=axis.radius_mm if angle else None,
             radius_assumed=angle and self.peaks.goniometer_radius_mm is None,
-            at_lines_deg=tuple(map(float, self._shift_at_lines(fit))) if known else None,
-            at_lines_esd_deg=tuple(map(float, np.sqrt(np.maximum(variance, 0.0)))) if known else None,
+            at_lines_deg=self._at_every_line(self._shift_at_lines(fit)) if known else None,
+            at_lines_esd_deg=self._at_every_line(np.sqrt(np.maximum(variance, 0.0))) if known else None,
         )
+
+    def _at_every_line(self, values: FloatArray) -> tuple[float, ...]:
+        """Return values known at the lines that were matched at every line of the list, foreign ones too."""
+        place = -np.log(self.peaks.d_angstrom)
+        return tuple(map(float, np.interp(place, place[self.foreign.kept], values)))
 
     def _ledger(self) -> tuple[LedgerLine, ...]:
         best = self.posterior.best

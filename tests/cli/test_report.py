@@ -94,3 +94,13 @@ def test_bad_usage(starter_store, knife, tmp_path, monkeypatch, words, code, sai
     assert ran.code == code
     assert said in ran.err
     assert list(tmp_path.iterdir()) == []
+
+
+def test_foreign_lines_are_drawn_and_marked(starter_store, knife, tmp_path):
+    (tmp_path / "holder.csv").write_text("# radiation: Cu\ntwo_theta_deg\n33.159\n")
+    words = ("--foreign", tmp_path / "holder.csv", "--elements", "Ti,N,Fe,C", "-o", tmp_path / "a.html")
+    ran = run("report", knife, *words, store=starter_store)
+    assert ran.code == 0, ran.err
+    text = (tmp_path / "a.html").read_text(encoding="utf-8")
+    assert "foreign line" in text
+    assert 'data-line="1"' in text
