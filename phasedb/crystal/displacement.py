@@ -41,5 +41,5 @@ def typical_b_iso(formula: Formula) -> float:
     for anions, value in _BY_ANION:
         if elements & anions:
             return value
-    known = [_OF_ELEMENTS[symbol] for symbol in elements if symbol in _OF_ELEMENTS]
+    known = [_OF_ELEMENTS[symbol] for symbol in formula.elements if symbol in _OF_ELEMENTS]
     return min(round(sum(known) / len(known), 2), 1.5) if known else _ELSE

@@ -71,7 +71,7 @@ def structure_from_sites(space_group_name: str, sites: str, formula: str) -> Str
     contents = cell_contents(structure)
     total = sum(contents.values())
     held = {symbol: count / total for symbol, count in contents.items()}
-    for symbol in {*held, *parsed.composition}:
+    for symbol in dict.fromkeys([*parsed.composition, *held]):
         stated = parsed.composition.get(symbol, 0.0) / parsed.atoms
         if abs(held.get(symbol, 0.0) - stated) > _SAME_COMPOSITION:
             raise InputError(

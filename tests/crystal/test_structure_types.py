@@ -1,6 +1,9 @@
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 from starter_phases import starter_phases, starter_rows
 
+from phasedb.crystal.formula import parse_formula
 from phasedb.crystal.own_type import is_complete, structure_from_sites
 from phasedb.crystal.structure import cell_contents, space_group
 from phasedb.crystal.structure_types import (
@@ -218,7 +221,7 @@ def test_an_own_type_is_taken_from_space_group_and_sites():
 @pytest.mark.parametrize(
     ("group", "sites", "formula", "words"),
     [
-        ("F m -3 m", "Na(0,0,0); Cl(1/4,1/4,1/4)", "NaCl", "66.7 % Cl atoms, NaCl has 50.0 %"),
+        ("F m -3 m", "Na(0,0,0); Cl(1/4,1/4,1/4)", "NaCl", "33.3 % Na atoms, NaCl has 50.0 %"),
         ("F d -3 m", "Si(1/8,1/8,1/8)", "Si", "two choices of origin"),
         ("P 4/m m m", "Na(0,0,0)", "Na", "not cubic"),
         ("F m -3 m", "", "Na", "not given"),
@@ -228,3 +231,40 @@ def test_an_own_type_is_taken_from_space_group_and_sites():
 def test_an_own_type_that_does_not_amount_to_the_formula_is_refused(group, sites, formula, words):
     with pytest.raises(InputError, match=words):
         structure_from_sites(group, sites, formula)
+
+
+FORMULAS = st.lists(
+    st.tuples(
+        st.sampled_from(["Fe", "Cr", "Ti", "Na", "Mg", "Al", "O", "S", "F", "C", "N", "H", "Si"]),
+        st.integers(1, 12),
+    ),
+    min_size=1,
+    max_size=5,
+    unique_by=lambda pair: pair[0],
+)
+
+
+@given(st.sampled_from(structure_type_symbols()), FORMULAS, st.sampled_from([1, 2, 10]))
+def test_any_formula_fills_a_type_or_is_refused(symbol, counts, divisor):
+    """A structure that is given holds the formula: no atom is lost or invented, no site is overfull."""
+    formula = "".join(f"{element}{count / divisor:g}" for element, count in counts)
+    try:
+        structure = structure_from_type(symbol, formula)
+    except InputError as error:
+        assert formula in str(error) or "sites" in str(error)
+        return
+    composition = parse_formula(formula).composition
+    contents = cell_contents(structure)
+    left_out = set(composition) - set(contents)
+    assert left_out <= {"H"}
+    scale = {symbol: contents[symbol] / composition[symbol] for symbol in contents}
+    assert max(scale.values()) == pytest.approx(min(scale.values()), rel=1e-6)
+
+
+@given(st.text(alphabet="OMgx(),.;=[] 0123456789-/u", max_size=40))
+def test_any_parameter_text_is_read_or_refused(text):
+    try:
+        structure = structure_from_type("H1_1", "MgAl2O4", free_parameters=text)
+    except InputError:
+        return
+    assert len(structure.sites) == 3
