@@ -20,6 +20,8 @@ if TYPE_CHECKING:
     from phasedb.library import Library
     from phasedb.report.axis_figure import Entry
 
+_MOST_MARKED = 50_000  # more entries than this are a grey bar, and slow to read
+
 _DETAILS = (
     ("laboratory", "Laboratory and its address."),
     ("customer", "Who asked for the test."),
@@ -117,10 +119,11 @@ def _page(
     given["instrument"] = given["instrument"] or instrument or ""
     given["sample"] = given["sample"] or found.measurement.sample
     changed = library.fingerprint != found.library_fingerprint
+    many = library.phase_count > _MOST_MARKED
     facts = PageFacts(
         issued=issued or datetime.now(UTC).date().isoformat(),
-        entries=_entries(library.table()),
-        entry_remark=", as the library is now" if changed else "",
+        entries=() if many else _entries(library.table()),
+        entry_remark=" are too many to show" if many else ", as the library is now" if changed else "",
         history_head=library.history_head,
         record=record,
     )

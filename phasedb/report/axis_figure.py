@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from bisect import bisect_left
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -89,12 +90,11 @@ def _axis_row(
 
 
 def _height_at(curve: AxisCurve | None, a_angstrom: float) -> float:
-    """The curve's highest value close to a (0.2 %), where its label is to stand."""
+    """The curve's highest value at and beside a, where its label is to stand."""
     if curve is None:
         return 0.0
-    place = math.log(a_angstrom)
-    near = [v for x, v in zip(curve.ln_a, curve.log_evidence, strict=True) if abs(x - place) < 2e-3]
-    return max([*near, 0.0])
+    place = bisect_left(curve.ln_a, math.log(a_angstrom))
+    return max([*curve.log_evidence[max(0, place - 2) : place + 2], 0.0])
 
 
 def _axis_labels(
@@ -108,16 +108,15 @@ def _axis_labels(
 
     `character` is the width of a letter on the ln a axis.
     """
+    step = 0.14 * top / (1.0 - 0.08 * min(len(named), 8))  # room for a label in a row that grows with them
     taken: list[tuple[float, float, float]] = []  # from, to (ln a) and height of the labels so far
     for label, _, a, mark in sorted(named, key=lambda place: place[2]):
         peak = _height_at(curve, a) + 0.1 * top
         text = f"{mark.letter} {drawing.shortened(label, 22)}"
         start, end = math.log(a), math.log(a) + (len(text) + 3) * character
         height = peak
-        while any(
-            start < right and left < end and abs(height - at) < 0.15 * top for left, right, at in taken
-        ):
-            height += 0.15 * top
+        while any(start < right and left < end and abs(height - at) < step for left, right, at in taken):
+            height += 0.2 * step
         taken.append((start, end, height))
         axes.plot(
             [a, a], [-0.34 * top, height], color=mark.colour, linewidth=1.0, gid=f"phase-{mark.letter}-place"

@@ -117,9 +117,14 @@ def _legend(axes: Axes, match: Match, marks: dict[str, Mark], *, columns: int) -
 
     leading = [claim for line in match.ledger if (claim := leading_claim(line)) is not None]
     claiming = {claim.name for claim in leading if claim.kind != "foreign"}
+    sure = {claim.name for claim in leading if claim.probability > wording.CLAIMED_FROM}
     handles = [
         Line2D(
-            [], [], color=mark.colour, marker=mark.shape, label=f"{mark.letter}  {drawing.shortened(name)}"
+            [],
+            [],
+            color=mark.colour,
+            marker=mark.shape,
+            label=f"{mark.letter}  {drawing.shortened(name)}" + ("" if name in sure else ", or a look-alike"),
         )
         for name, mark in marks.items()
         if name in claiming
@@ -148,7 +153,7 @@ def _shift_at(match: Match) -> list[float]:
 
 def _deviations(axes: Axes, match: Match, marks: dict[str, Mark]) -> None:
     """Observed minus ideal positions: what all lines share is the shift curve, the rest is scatter."""
-    in_degrees = match.measurement.wavelength_angstrom is not None
+    in_degrees = wording.in_degrees(match)
     shift = _shift_at(match)
     noise = match.shift.noise_deg if in_degrees else match.shift.noise_relative
     factor = 1.0 if in_degrees else 100.0

@@ -139,8 +139,7 @@ def _ledger(match: Match, width: int) -> str:
             start.append("-" if line.intensity is None else f"{100 * line.intensity / strongest:.1f}")
         for index, claim in enumerate(_claims(line)):
             rows.append([*(start if index == 0 else [""] * len(start)), *claim])
-    in_degrees = match.measurement.wavelength_angstrom is not None
-    meaning = "degrees 2theta" if in_degrees else "percent of d"
+    meaning = "degrees 2theta" if wording.in_degrees(match) else "percent of d"
     note = (
         f"Deviation: observed minus calculated, after the shift, in {meaning}; p: probability of the claim."
     )

@@ -7,7 +7,7 @@ from typing import Final
 
 from phasedb.crystal.lattice import Hkl
 from phasedb.crystal.quantity import format_measured
-from phasedb.identify.result import Claim, LedgerLine, MeritF, MeritM, PhaseResult
+from phasedb.identify.result import Claim, LedgerLine, Match, MeritF, MeritM, PhaseResult
 
 POSITION_TITLES: Final[dict[str, str]] = {
     "two-theta": "2theta, deg",
@@ -102,6 +102,8 @@ def hkl_text(hkls: Sequence[Hkl]) -> str:
 
 def claimant(claim: Claim) -> str:
     """Return who claims a line: the phase's name, or ``K-beta of`` it."""
+    if claim.kind == "foreign" and claim.name == "foreign":
+        return "foreign line"
     words = KIND_WORDS[claim.kind]
     return f"{words} {claim.name}" if words else claim.name
 
@@ -116,6 +118,14 @@ def deviation(claim: Claim) -> str:
     if claim.delta_two_theta_deg is not None:
         return f"{claim.delta_two_theta_deg:+.3f}"
     return f"{100 * claim.delta_relative:+.3f} %"
+
+
+def in_degrees(match: Match) -> bool:
+    """Return whether the deviations of a match are in degrees 2theta; in percent of d otherwise."""
+    claims = [claim for line in match.ledger for claim in line.claims]
+    if claims:
+        return any(claim.delta_two_theta_deg is not None for claim in claims)
+    return match.shift.noise_deg is not None or match.measurement.position_unit == "two-theta"
 
 
 def is_explained(line: LedgerLine) -> bool:

@@ -58,6 +58,11 @@ def test_help_is_no_wider_than_80_columns_in_a_pipe(command):
     assert long == []
 
 
+def test_every_command_that_prints_a_result_has_json():
+    without = [name for name in COMMANDS if name != "instrument" and "--json" not in run(name, "--help").out]
+    assert without == []
+
+
 def test_short_help_lines_are_short():
     assert all(len(text) <= 60 for _, _, text in COMMANDS.values())
 
