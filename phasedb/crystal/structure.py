@@ -23,6 +23,9 @@ SAME_POSITION: Final = 2e-3
 Coordinates are published to three or more decimals; atoms of a 20 Å cell are further apart than 0.04 Å.
 """
 
+_STEPS_ONTO_SPECIAL: Final = 20
+_SETTLED: Final = 1e-13
+
 _TWO_ORIGINS: Final = frozenset({201, 203, 222, 224, 227, 228})
 
 
@@ -104,12 +107,16 @@ def _reduced_orbit(name: str, position: tuple[float, float, float]) -> FloatArra
     """Return one image of `position` for each set that the centring relates, shape (n, 3), read-only."""
     group = space_group(name)
     point = np.asarray(position, dtype=np.float64)
-    images = group.rotations @ point + group.translations
-    # move the point onto the special position that it is meant to hold: the mean of its images nearby
-    shifted = images[:, None, :] + group.centring[None, :, :] - point
-    shifted -= np.round(shifted)
-    onto_itself = np.abs(shifted).max(axis=2) < SAME_POSITION
-    point = point + shifted[onto_itself].mean(axis=0)
+    # Move the point onto the special position that it is meant to hold: the mean of its images nearby. Once
+    # is enough unless some of them lie just outside the limit; each step brings those nearer.
+    for _ in range(_STEPS_ONTO_SPECIAL):
+        images = group.rotations @ point + group.translations
+        shifted = images[:, None, :] + group.centring[None, :, :] - point
+        shifted -= np.round(shifted)
+        step = shifted[np.abs(shifted).max(axis=2) < SAME_POSITION].mean(axis=0)
+        point = point + step
+        if np.abs(step).max() < _SETTLED:
+            break
     images = group.rotations @ point + group.translations
     smallest = _keys(images[:, None, :] + group.centring[None, :, :]).min(axis=1)
     _, first = np.unique(smallest, return_index=True)

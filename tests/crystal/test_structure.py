@@ -99,6 +99,12 @@ def test_any_image_of_a_position_gives_the_same_orbit(name, position):
     assert order % len(atoms) == 0
 
 
+def test_a_position_at_the_edge_of_being_special_is_decided_whole():
+    # some images lie inside the limit and some just outside: all of them must merge, or none
+    for distance in (0.0009, 0.0011, 0.00195, 0.0021, 0.003):
+        assert site_multiplicity("F -4 3 c", (0.0, 0.0, 1.0 - distance)) in (8, 48)
+
+
 def test_a_rounded_special_position_is_one_atom():
     # published as 0.3333 or 0.125 to three decimals, never exactly
     assert site_multiplicity("F d -3 m:2", (0.1249, 0.1251, 0.125)) == 8
