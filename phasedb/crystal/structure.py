@@ -17,10 +17,11 @@ from phasedb.errors import InputError
 
 FloatArray = NDArray[np.float64]
 
-SAME_POSITION: Final = 2e-3
+SAME_POSITION: Final = 1.9371e-3
 """Images of a position nearer than this (fraction of a) are one atom on a special position.
 
 Coordinates are published to three or more decimals; atoms of a 20 Å cell are further apart than 0.04 Å.
+Not a round number, so that rounding noise never decides about coordinates that are.
 """
 
 _STEPS_ONTO_SPECIAL: Final = 20
