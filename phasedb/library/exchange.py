@@ -157,9 +157,12 @@ class _Planner:
         if same_content and candidate.entry == first.entry:
             self.plan.same.append(candidate)
             return
-        column = "name" if key_of(candidate.name) == key_of(first.name) else "uid"
+        if candidate.entry is not None and first.entry is not None and candidate.entry.uid == first.entry.uid:
+            column, what = "uid", "uid"
+        else:
+            column, what = "name", f"name {candidate.name!r}"
         self.plan.clashes.append(
-            candidate.bad(column, f"{first.place(candidate)} has this {column} already, with other values")
+            candidate.bad(column, f"{first.place(candidate)} has the {what} already, with other values")
         )
 
     def _place_new(self, candidate: Candidate) -> None:

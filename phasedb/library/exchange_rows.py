@@ -109,7 +109,7 @@ _PUBLIC: Final = {"temperature_k": "temperature_K", "expansion_per_k": "thermal_
 def _column_at_fault(draft: Draft) -> str:
     """Return the field without which the draft would pass: the checks themselves name values, not columns."""
     blank = Draft(**_HARMLESS)
-    for name in Draft.__dataclass_fields__:
+    for name in sorted(Draft.__dataclass_fields__, key=_HARMLESS.__contains__):  # a last: others depend on it
         cured = {name: getattr(blank, name)}
         if name == "a_angstrom":
             cured |= {"a_min_angstrom": None, "a_max_angstrom": None, "a_esd_angstrom": None}

@@ -12,8 +12,8 @@ from pathlib import Path
 
 import pytest
 
-from phasedb.crystal.checks import METALLIC
 from phasedb.crystal.elements import ELEMENTS
+from phasedb.crystal.radii import METALLIC
 from phasedb.library import Library
 from phasedb.library.exchange_import import GivenFile, import_files
 
