@@ -184,6 +184,18 @@ def _about(foreign: ForeignHistory, uids: Collection[str]) -> Iterator[tuple[str
             yield inner.pop("library_id"), inner
 
 
+def carried_row(row: HistoryRow) -> tuple[str, HistoryRow]:
+    """Return the row of another library that `row` holds, and that library; else an empty text and the row."""
+    if not row.kind.startswith(CARRIED_KIND) or row.after is None:
+        return "", row
+    inner = json.loads(row.after)
+    library_id = str(inner.pop("library_id"))
+    texts = {
+        name: None if inner[name] is None else canonical_json(inner[name]) for name in ("before", "after")
+    }
+    return library_id, HistoryRow(**{**inner, **texts})
+
+
 def _kinds_here(connection: Connection) -> set[str]:
     history = tables.history.c
     query = sa.select(history.kind).where(history.kind.startswith(CARRIED_KIND, autoescape=True))

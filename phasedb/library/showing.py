@@ -272,8 +272,11 @@ def history_document(rows: Sequence[HistoryRow]) -> dict[str, Any]:
 
 def history_sections(rows: Sequence[HistoryRow], *, in_full: bool) -> list[tuple[str, Pairs]]:
     """Return the history as a log: a line for each row, with why, and what changed if `in_full`."""
+    from phasedb.library.exchange_history import carried_row
+
     sections = []
-    for row in rows:
+    for own in rows:
+        library_id, row = carried_row(own)
         before, after = _parsed(row.before), _parsed(row.after)
         subject = _subject(after or before or {})
         what = f"{row.action} {row.kind}" + (f" {subject!r}" if subject else "")
@@ -283,7 +286,12 @@ def history_sections(rows: Sequence[HistoryRow], *, in_full: bool) -> list[tuple
             details += _details(before, after)
         if row.remark:
             details.append(("why", row.remark))
-        sections.append((f"{row.number:>5}  {when(row.at)}  {row.who}  {what}", details))
+        if library_id:
+            said = (
+                f"library {library_id[:8]}, its row {row.number}; carried over by {own.who}, {when(own.at)}"
+            )
+            details.append(("in", said))
+        sections.append((f"{own.number:>5}  {when(row.at)}  {row.who}  {what}", details))
     return sections
 
 

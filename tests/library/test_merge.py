@@ -39,6 +39,10 @@ def test_entries_come_with_standing_replacement_and_history(starter: str, other:
         assert (old.standing, old.replaced_by) == ("withdrawn", carbide.uid)
         actions = [row.action for row in library.history("their carbide")]
         assert actions == ["merged", "carried over", "carried over"]
+    told = run("history", "their carbide", store=starter).out
+    assert "Olga  entered phase 'their carbide'" in told
+    assert "Pia  checked phase 'their carbide'" in told
+    assert "carried over by A. First" in " ".join(told.split())
     assert audit_faults(starter) == []
     before = Path(starter).read_bytes()
     again = run("merge", other, "--json", store=starter).json
