@@ -97,6 +97,7 @@ def import_(ctx: click.Context, files: tuple[str, ...], skip_bad: bool, as_json:
                 "left_out": [_bad_document(row) for row in done.left_out],
                 "warnings": [_warning_document(row) for row in done.warnings],
                 "notes": list(done.notes),
+                "measurements": done.measurements,
                 "history_rows_carried_over": done.carried,
                 "history_head": library.history_head,
             }
@@ -194,6 +195,7 @@ def merge(ctx: click.Context, other: str, dry_run: bool, keep_ours: bool, as_jso
                 "clashes": [_bad_document(row) for row in plan.clashes],
                 "neighbours": [_warning_document(row) for row in plan.warnings],
                 "notes": list(plan.remarks),
+                "measurements": done.measurements,
                 "history_rows_carried_over": done.carried,
                 "history_head": library.history_head,
             }

@@ -51,10 +51,19 @@ def _row_of(connection: Connection, table: sa.Table, uid: str) -> dict[str, Any]
 
 
 def insert_record(
-    writing: Writing, table: sa.Table, values: dict[str, Any], *, action: str = "entered", remark: str = ""
+    writing: Writing,
+    table: sa.Table,
+    values: dict[str, Any],
+    *,
+    action: str = "entered",
+    remark: str = "",
+    uid: str | None = None,
 ) -> dict[str, Any]:
-    """Insert a row of one of `RECORD_TABLES` with a new uid and its history row; return the whole row."""
-    uid = new_uid()
+    """Insert a row of one of `RECORD_TABLES` with its history row; return the whole row.
+
+    It gets a new uid, unless it comes from another library and keeps its own.
+    """
+    uid = uid or new_uid()
     writing.connection.execute(sa.insert(table).values(uid=uid, **values))
     row = _row_of(writing.connection, table, uid)
     document = record_document(writing.connection, table, row)

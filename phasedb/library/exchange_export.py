@@ -97,12 +97,17 @@ def _json(
 ) -> Iterable[str]:
     from phasedb.library.exchange_history import history_text
     from phasedb.library.exchange_json import json_text
+    from phasedb.library.exchange_measurements import measurements_text
 
     history = None
     if with_history:
         history = history_text(connection, library.library_id, library.history_count, library.history_head)
     return json_text(
-        entries, phase_count=library.phase_count, fingerprint=library.fingerprint, history=history
+        entries,
+        phase_count=library.phase_count,
+        fingerprint=library.fingerprint,
+        measurements=measurements_text(connection),
+        history=history,
     )
 
 

@@ -185,7 +185,7 @@ def _about(foreign: ForeignHistory, uids: Collection[str]) -> Iterator[tuple[str
 
 
 def carried_row(row: HistoryRow) -> tuple[str, HistoryRow]:
-    """Return the row of another library that `row` holds, and that library; else an empty text and the row."""
+    """Return the row of another library that `row` holds, with that library; else "" and the row itself."""
     if not row.kind.startswith(CARRIED_KIND) or row.after is None:
         return "", row
     inner = json.loads(row.after)

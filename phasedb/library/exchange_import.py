@@ -12,10 +12,11 @@ from typing import TYPE_CHECKING, Any, Final, Literal, get_args
 from phasedb.errors import InputError
 from phasedb.library.exchange import Past, Plan, RowWarning, plan, write_plan
 from phasedb.library.exchange_history import ForeignHistory, carry, read_history
+from phasedb.library.exchange_known import uids_here
+from phasedb.library.exchange_measurements import bring_measurements, read_measurements
 from phasedb.library.exchange_rows import BadRow, Candidate
 
 if TYPE_CHECKING:
-    from phasedb.library.entry import Entry
     from phasedb.library.store import Library
     from phasedb.library.writing import Writing
 
@@ -82,6 +83,8 @@ class Imported:
     left_out : tuple of BadRow
     warnings : tuple of RowWarning
     notes : tuple of str
+    measurements : int
+        Lists that belong to entries, brought in with them.
     carried : int
         History rows of other libraries that were carried along.
     """
@@ -93,6 +96,7 @@ class Imported:
     left_out: tuple[BadRow, ...]
     warnings: tuple[RowWarning, ...]
     notes: tuple[str, ...]
+    measurements: int
     carried: int
 
 
@@ -101,7 +105,8 @@ class _Read:
     candidates: list[Candidate] = field(default_factory=list)
     bad: list[BadRow] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
-    histories: list[tuple[GivenFile, ForeignHistory]] = field(default_factory=list)
+    histories: dict[str, ForeignHistory] = field(default_factory=dict)  # by file, as the next
+    measurements: dict[str, list[dict[str, Any]]] = field(default_factory=dict)
 
     @property
     def total(self) -> int:
@@ -148,6 +153,8 @@ def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say
     if read.bad and not skip_bad and not read.candidates:
         raise BadRowsError(read.bad, read.total)
     sha256 = {file.name: file.sha256[:16] for file in files}
+    measured = 0
+    carried = 0
     with library.begin_write() as writing:
         found = plan(
             writing.connection, read.candidates, by=writing.person.who, at=writing.at, past=_past(read)
@@ -156,12 +163,14 @@ def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say
         if bad and not skip_bad:
             raise BadRowsError(bad, read.total)
         _write(writing, found, sha256, say)
-        carried = sum(
-            carry(
-                writing, history, _uids(found, file), remark=f"from {file.name} (sha256 {sha256[file.name]})"
+        for file in files:
+            remark = f"from {file.name} (sha256 {sha256[file.name]})"
+            here = uids_here(writing.connection, _uids(read, file))
+            measured += bring_measurements(
+                writing, read.measurements.get(file.name, ()), here, action="imported", remark=remark
             )
-            for file, history in read.histories
-        )
+            if file.name in read.histories:
+                carried += carry(writing, read.histories[file.name], here, remark=remark)
     return Imported(
         new=len(found.new),
         newer=len(found.newer),
@@ -170,6 +179,7 @@ def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say
         left_out=tuple(bad),
         warnings=tuple(found.warnings),
         notes=(*read.notes, *found.remarks),
+        measurements=measured,
         carried=carried,
     )
 
@@ -180,7 +190,7 @@ def _silent(what: str, done: int, total: int) -> None:
 
 def _past(read: _Read) -> Past:
     def past(uid: str) -> list[dict[str, Any]]:
-        return [document for _, history in read.histories for document in history.past(uid)]
+        return [document for history in read.histories.values() for document in history.past(uid)]
 
     return past
 
@@ -200,12 +210,9 @@ def _write(writing: Writing, found: Plan, sha256: dict[str, str], say: Progress)
     write_plan(writing, found, action="imported", remark=remark, progress=written)
 
 
-def _uids(found: Plan, file: GivenFile) -> set[str]:
-    """Return the entries of a file that the library now has under the same uid."""
-    coming: list[tuple[Candidate, Entry | None]] = [*found.new]
-    coming += [(step.candidate, step.new) for step in found.newer]
-    coming += [(candidate, candidate.entry) for candidate in (*found.same, *found.older)]
-    return {entry.uid for candidate, entry in coming if entry is not None and candidate.file == file.name}
+def _uids(read: _Read, file: GivenFile) -> set[str]:
+    """Return the uids of the entries in a file."""
+    return {c.entry.uid for c in read.candidates if c.entry is not None and c.file == file.name}
 
 
 # --- reading
@@ -223,6 +230,7 @@ def _read_file(file: GivenFile, read: _Read, say: Progress) -> None:
         total = len(document["phases"])
         rows = read_phases(document, file.name, read.notes)
         history = document
+        read.measurements[file.name] = read_measurements(document, file.name)
     elif file.kind == "csv":
         from phasedb.library.exchange_csv import read_csv
 
@@ -244,6 +252,6 @@ def _read_file(file: GivenFile, read: _Read, say: Progress) -> None:
         entries = [c.entry for c in read.candidates[first:] if c.entry is not None]
         proved = read_history(history, file.name, entries)
         if proved is not None:
-            read.histories.append((file, proved))
+            read.histories[file.name] = proved
     elif history is not None and history.get("history") is not None:
         read.notes.append(f"{file.name}: its history was not carried over, since rows of it are bad")

@@ -1,8 +1,9 @@
 """Entries as JSON (schema ``phasedb.library/1``): loss-free, with the history on request.
 
-The members are ``schema``, ``program_version``, ``phase_count``, ``fingerprint``, ``phases`` and ``history``
-(null unless asked for, see `phasedb.library.exchange_history`). Each phase has every stored field under its
-name in `phasedb.library.exchange_fields`; the same entries give the same bytes.
+The members are ``schema``, ``program_version``, ``phase_count``, ``fingerprint``, ``phases``,
+``measurements`` (the lists that adopted phases came from) and ``history`` (null unless asked for). Each phase
+has every stored field under its name in `phasedb.library.exchange_fields`; the
+same entries give the same bytes.
 """
 
 from __future__ import annotations
@@ -28,12 +29,19 @@ SCHEMA: Final = "phasedb.library/1"
 
 
 def json_text(
-    entries: Iterable[Entry], *, phase_count: int, fingerprint: str, history: Iterable[str] | None = None
+    entries: Iterable[Entry],
+    *,
+    phase_count: int,
+    fingerprint: str,
+    measurements: Iterable[str],
+    history: Iterable[str] | None = None,
 ) -> Iterator[str]:
     """Yield the document of all entries, one line for each.
 
     Parameters
     ----------
+    measurements : iterable of str
+        The text of the member ``measurements``, in pieces.
     history : iterable of str, optional
         The text of the member ``history``, in pieces.
     """
@@ -45,7 +53,9 @@ def json_text(
     for entry in entries:
         yield separator + canonical_json(entry_to_json(entry))
         separator = ",\n"
-    yield '\n],\n"history": '
+    yield '\n],\n"measurements": '
+    yield from measurements
+    yield ',\n"history": '
     yield from ["null"] if history is None else history
     yield "\n}\n"
 

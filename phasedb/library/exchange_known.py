@@ -61,6 +61,15 @@ class Known:
         return [(row.action, json.loads(row.after)) for row in rows]
 
 
+def uids_here(connection: Connection, uids: Iterable[str]) -> set[str]:
+    """Return those uids that belong to an entry of this library."""
+    phase = tables.phase.c
+    found: set[str] = set()
+    for chunk in _chunks(sorted(set(uids))):
+        found.update(connection.execute(sa.select(phase.uid).where(phase.uid.in_(chunk))).scalars())
+    return found
+
+
 def _chunks(values: Sequence[Any]) -> Iterable[Sequence[Any]]:
     for start in range(0, len(values), _KEYS_AT_ONCE):
         yield values[start : start + _KEYS_AT_ONCE]

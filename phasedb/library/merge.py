@@ -12,6 +12,7 @@ from phasedb.library import connect
 from phasedb.library.audit import audit
 from phasedb.library.exchange import Plan, plan, write_plan
 from phasedb.library.exchange_history import CARRIED_KIND, ForeignHistory, carry, history_rows
+from phasedb.library.exchange_measurements import bring_measurements, measurements_of
 from phasedb.library.exchange_rows import BadRow, Candidate, whole_content
 from phasedb.library.preparing import Prepared
 
@@ -30,6 +31,8 @@ class Merged:
     plan : Plan
     left_out : tuple of BadRow
         Clashes that were left as they are here.
+    measurements : int
+        Lists that belong to entries, brought in with them.
     carried : int
         History rows of the other library that were carried along.
     written : bool
@@ -37,6 +40,7 @@ class Merged:
 
     plan: Plan
     left_out: tuple[BadRow, ...]
+    measurements: int
     carried: int
     written: bool
 
@@ -97,6 +101,7 @@ def merge(
                 r for r in history_rows(connection) if r.kind == "phase" or r.kind.startswith(CARRIED_KIND)
             )
             foreign = ForeignHistory(other.library_id, rows)
+            measurements = list(measurements_of(connection))
             origin = f"from library {other.library_id[:8]} at {place}, history head {other.history_head[:16]}"
     candidates = [_candidate(entry, place) for entry in entries]
     if dry_run:
@@ -104,7 +109,7 @@ def merge(
             found_plan = _plan(connection, candidates, foreign)
         if announce is not None:
             announce(found_plan)
-        return Merged(found_plan, tuple(found_plan.clashes), 0, False)
+        return Merged(found_plan, tuple(found_plan.clashes), 0, 0, False)
     with library.begin_write() as writing:
         found_plan = _plan(writing.connection, candidates, foreign)
         if announce is not None:
@@ -112,8 +117,10 @@ def merge(
         if found_plan.clashes and not keep_ours:
             raise ClashesRefusedError(found_plan.clashes)
         _write(writing, found_plan, origin, progress)
-        carried = carry(writing, foreign, _uids(found_plan), remark=origin)
-    return Merged(found_plan, tuple(found_plan.clashes), carried, True)
+        brought = _uids(found_plan)
+        measured = bring_measurements(writing, measurements, brought, action="merged", remark=origin)
+        carried = carry(writing, foreign, brought, remark=origin)
+    return Merged(found_plan, tuple(found_plan.clashes), measured, carried, True)
 
 
 def _write(writing: Writing, found: Plan, origin: str, progress: Callable[[int, int], None] | None) -> None:
