@@ -115,7 +115,12 @@ def index_lines(peaks: PeakList, *, shift_prior: ShiftPrior | None = None) -> In
     axis = make_axis(peaks, shift_prior or ShiftPrior())
     entries = prepare(PhaseTable.from_phases([]), MatchSettings(), peaks.temperature_k)
     search = Search(
-        axis, entries, 1, places_of_each_lattice=PLACES_OF_EACH_LATTICE, expected_unlisted=EXPECTED_CUBIC
+        axis,
+        entries,
+        1,
+        places_of_each_lattice=PLACES_OF_EACH_LATTICE,
+        expected_unlisted=EXPECTED_CUBIC,
+        zones_of_each_kind=0,
     )
     search.run()
     fits = sorted(search.sets(), key=lambda fit: (-fit.log_evidence, fit.key))

@@ -17,7 +17,7 @@ from phasedb.identify.foreign import ForeignLines
 from phasedb.identify.likelihood import N_SHIFT
 from phasedb.identify.lookalikes import Reading, find_look_alikes, what_separates
 from phasedb.identify.merit import merit_f, merit_m, possible_lines
-from phasedb.identify.posterior import Posterior
+from phasedb.identify.posterior import Posterior, WeightedSet
 from phasedb.identify.result import (
     Claim,
     ClaimKind,
@@ -296,13 +296,13 @@ class Assembler:
 
     def _unlisted(self) -> Unlisted:
         candidates = self.search.candidates
-        probability = self.posterior.chance(lambda key: any(candidates.entry_of[m] < 0 for m in key))
+        probability = self.posterior.chance(lambda key: any(candidates.is_unlisted(m) for m in key))
         places: list[tuple[int, float, float, Fitted, int]] = []  # lattice, ln a, probability, fit, place
         for item in self.posterior.sets:
             if item.fit is None or item.only_looks_cubic:
                 continue
             for place, member in enumerate(item.fit.members):
-                if candidates.entry_of[member] >= 0:
+                if not candidates.is_unlisted(member):
                     continue
                 lattice, ln_a = candidates.lattice_of[member], float(item.fit.ln_a[place])
                 for number, known in enumerate(places):
@@ -411,7 +411,7 @@ class Assembler:
             unexplained += weight * float(fit.batch.background[fit.row, observed])
             for place, member in enumerate(fit.members):
                 claims = fit.batch.claims[fit.row, place, observed]
-                if item.only_looks_cubic and self.search.candidates.entry_of[member] < 0:
+                if self._is_unexplained(item, member):
                     unexplained += weight * float(claims.sum())
                     continue
                 for slot in np.flatnonzero(claims > 1e-3):
@@ -442,6 +442,11 @@ class Assembler:
                 )
             )
         return tuple(claims_made), min(unexplained / covered, 1.0)
+
+    def _is_unexplained(self, item: WeightedSet, member: int) -> bool:
+        """Return whether what a member claims counts as unexplained: it is not cubic."""
+        candidates = self.search.candidates
+        return candidates.is_zone(member) or (item.only_looks_cubic and candidates.is_unlisted(member))
 
     def _label(self, fit: Fitted, place: int) -> str:
         member = fit.members[place]

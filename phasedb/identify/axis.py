@@ -59,6 +59,9 @@ class Axis:
         ln of intensity with the strongest line at 1.
     extra_noise : (n,)
         Part of the noise that the list itself declares (esd and width), in units of x.
+    noise_profile : (n,)
+        The list's noise at each line relative to its scale. 1 for angles and rings. A list of d alone was read
+        from angles nearly always, so that its relative noise grows as cot(theta), about as d.
     low, high : float
         Measured range on x.
     wavelength : float or None
@@ -82,6 +85,7 @@ class Axis:
     x: FloatArray
     ln_intensity: FloatArray | None
     extra_noise: FloatArray
+    noise_profile: FloatArray
     low: float
     high: float
     wavelength: float | None
@@ -95,6 +99,8 @@ class Axis:
     doublet_width: float
     doublet_resolved: bool
     ghosts: tuple[Ghost, ...]
+    read_from_angles: bool = False
+    likely_wavelength: float | None = None
     blocked: tuple[tuple[float, float], ...] = ()
 
     @property
@@ -120,9 +126,12 @@ class Axis:
         return np.asarray(-2.0 * np.degrees(np.tan(np.radians(x_true) / 2.0)))
 
     def displacement_basis(self, x_true: FloatArray) -> FloatArray:
-        """Return dx/ds for displacement s in mm: -(2/R)(180/pi) cos(theta); zero on ln d."""
+        """Return dx/ds for displacement s in mm: -(2/R)(180/pi) cos(theta).
+
+        On ln d of a list that was read from angles, the offset of a zero error, which grows as d; else zero.
+        """
         if self.wavelength is None:
-            return np.zeros_like(x_true)
+            return np.exp(-x_true) / TYPICAL_D_ANGSTROM if self.read_from_angles else np.zeros_like(x_true)
         return np.asarray(-(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0)))
 
     def bases(self, x_true: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -220,6 +229,7 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
             x=peaks.two_theta_deg,
             ln_intensity=ln_intensity,
             extra_noise=extra,
+            noise_profile=np.ones(len(peaks)),
             low=low,
             high=high,
             wavelength=radiation.wavelength_angstrom,
@@ -243,12 +253,17 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         x=-np.log(peaks.d_angstrom),
         ln_intensity=ln_intensity,
         extra_noise=extra,
+        noise_profile=np.ones(len(peaks))
+        if is_camera
+        else np.clip(peaks.d_angstrom / TYPICAL_D_ANGSTROM, 0.4, 4.0),
         low=low,
         high=high,
         wavelength=None,
         radius_mm=radius,
         shift_mean=np.zeros(3),
-        shift_scale=np.array([_scale_esd(peaks, is_camera=is_camera), NEVER, NEVER]),
+        shift_scale=np.array(
+            [_scale_esd(peaks, is_camera=is_camera), NEVER if is_camera else ZERO_OF_D_LIST, NEVER]
+        ),
         noise_center=NOISE_CENTER_RELATIVE_CAMERA if is_camera else NOISE_CENTER_RELATIVE,
         noise_spread=NOISE_SPREAD,
         resolution=2e-3 if is_camera else 5e-4,
@@ -256,6 +271,8 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         doublet_width=1.0,
         doublet_resolved=False,
         ghosts=(),
+        read_from_angles=not is_camera,
+        likely_wavelength=None if is_camera else _likely_wavelength(peaks),
     )
 
 
@@ -264,6 +281,14 @@ def _scale_esd(peaks: PeakList, *, is_camera: bool) -> float:
     if peaks.scale_esd_relative is not None:
         return peaks.scale_esd_relative
     return SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST
+
+
+def _likely_wavelength(peaks: PeakList) -> float:
+    """Return the wavelength (Å) that a list of d alone was most likely read with: copper's, if it reaches."""
+    for anode in ("Cu", "Mo"):
+        if peaks.d_angstrom.min() > 0.51 * EMISSION_LINES[anode].alpha1:
+            return EMISSION_LINES[anode].alpha1
+    return EMISSION_LINES["Ag"].alpha1
 
 
 def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:
@@ -306,7 +331,9 @@ NOISE_SPREAD = 0.9
 NOISE_CENTER_RELATIVE = 6e-4
 NOISE_CENTER_RELATIVE_CAMERA = 3e-3
 SCALE_OF_CAMERA = 5e-3
-SCALE_OF_D_LIST = 7e-4
+SCALE_OF_D_LIST = 4e-4
+ZERO_OF_D_LIST = 9e-4  # of ln d at TYPICAL_D_ANGSTROM: a zero error of 0.05 degrees with copper radiation
+TYPICAL_D_ANGSTROM = 1.5
 WIDTH_TO_NOISE = 0.06
 USUAL_WIDTH_DEG = 0.15
 NEVER = 1e-9  # the scale of a term that does not exist

@@ -13,8 +13,9 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from phasedb.crystal.lattice import LATTICE_TYPES, allowed_n
+from phasedb.crystal.lattice import LATTICE_TYPES, allowed_n, check_lattice_type
 from phasedb.identify.axis import Axis
+from phasedb.identify.zones import FIRST_CHANCE, ZONES, zone_n
 
 FloatArray = NDArray[np.float64]
 
@@ -26,7 +27,14 @@ STAMP_HALF_WIDTH: Final = 3.2  # standard deviations
 
 # Chance that the line of rank r of an unknown phase is seen: high for the first lines, lower as the cell grows
 # large (tuned, with the structure types of the starter library in view).
-_RANK_P: Final = {"P": (0.62, 14.0), "I": (0.68, 10.0), "F": (0.66, 9.0)}
+_RANK_P: Final = {
+    "P": (0.62, 14.0),
+    "I": (0.68, 10.0),
+    "F": (0.66, 9.0),
+    "square": FIRST_CHANCE,
+    "hexagonal": FIRST_CHANCE,
+}
+_SEQUENCES: Final = (*LATTICE_TYPES, *ZONES)
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,12 +48,15 @@ class Cell:
 
 @dataclass(frozen=True, slots=True)
 class Curve:
-    """Log evidence against background on an even ln a grid, for each lattice type (rows as LATTICE_TYPES)."""
+    """Log evidence against background on an even ln a grid.
+
+    Rows of `values` (5, n_grid): the lattice types as in LATTICE_TYPES, then the zones as in ZONES.
+    """
 
     cell: Cell
     start: float
     step: float
-    values: FloatArray  # (3, n_grid)
+    values: FloatArray
 
     def at(self, lattice: NDArray[np.integer], ln_a: FloatArray) -> FloatArray:
         """Return the curve at places (nearest grid point; -inf outside); arguments broadcast."""
@@ -60,6 +71,12 @@ class Curve:
 def _rank_chance(lattice: str, count: int) -> FloatArray:
     first, decay = _RANK_P[lattice]
     return first * np.exp(-np.arange(count) / decay) + 0.04
+
+
+def _line_numbers(sequence: str, n_max: int) -> NDArray[np.int64]:
+    if sequence in ZONES:
+        return zone_n(sequence, n_max)
+    return allowed_n(check_lattice_type(sequence), n_max)
 
 
 def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Curve:
@@ -79,7 +96,7 @@ def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Cur
     if axis.is_angle:
         x = np.clip(x, 0.2, 179.8)
     ln_d = axis.ln_d(x)
-    sigma = np.hypot(cell.sigma, axis.extra_noise[use])
+    sigma = np.hypot(cell.sigma * axis.noise_profile[use], axis.extra_noise[use])
     slope = np.abs(axis.slope(x))
     step = max(2e-4, float(np.median(sigma / slope)) * 0.5)
     start = np.log(A_SMALLEST)
@@ -92,12 +109,12 @@ def vote(axis: Axis, cell: Cell, base: FloatArray, explained: FloatArray) -> Cur
     offset = np.arange(-reach, reach + 1)
     # one stamp for each line: to half a step, which the width outweighs, every N lands on a grid point
     stamp = np.exp(-0.5 * (offset * step / width[:, None]) ** 2)
-    values = np.empty((3, count))
+    values = np.empty((len(_SEQUENCES), count))
     grid = start + step * np.arange(count)
-    for row, lattice in enumerate(LATTICE_TYPES):
+    for row, sequence in enumerate(_SEQUENCES):
         n_top = int(np.exp(2.0 * (np.log(A_LARGEST) - ln_d.min()))) + 1
-        n = allowed_n(lattice, min(n_top, 1500))
-        chance = _rank_chance(lattice, len(n))
+        n = _line_numbers(sequence, min(n_top, 1500))
+        chance = _rank_chance(sequence, len(n))
         odds = chance / (1.0 - chance)
         half = 0.5 * np.log(n)
         centre = ln_d[:, None] + half

@@ -317,7 +317,8 @@ class _Fit:
     def respond(self) -> None:
         """Compute the densities that every predicted line gives to the observed lines beside it."""
         axis = self.axis
-        sigma2 = np.exp(2.0 * self.ln_sigma)[:, None] + axis.extra_noise[None, :] ** 2
+        own = np.exp(2.0 * self.ln_sigma)[:, None] * axis.noise_profile**2
+        sigma2 = own + axis.extra_noise[None, :] ** 2
         sigma = np.sqrt(sigma2)[:, None, :, None]
         delta = axis.x[None, None, :, None] - self.near_x
         density, inner = self._position_density(delta, sigma)
@@ -461,9 +462,9 @@ class _Fit:
         """Move shifts, lattice constants and the noise scale one step."""
         matrix, right, of_lines = self.normal_equations()
         change = np.linalg.solve(matrix, right[..., None])[..., 0]
-        limit = 0.12 if self.axis.is_angle else 0.01
+        limit, limit_displacement = (0.12, 0.2) if self.axis.is_angle else (0.01, 0.003)
         self.phi[:, 0] += np.clip(change[:, 0], -limit, limit)
-        self.phi[:, 1] += np.clip(change[:, 1], -0.2, 0.2)
+        self.phi[:, 1] += np.clip(change[:, 1], -limit_displacement, limit_displacement)
         self.phi[:, 2] += np.clip(change[:, 2], -0.5, 0.5)
         self.u += np.clip(change[:, N_SHIFT:], -3e-3, 3e-3)
         gradient, curvature = self.noise_terms(matrix, of_lines)
@@ -476,7 +477,7 @@ class _Fit:
         Fitted parameters take up degrees of freedom: their effective number is the trace of A^-1 A_lines.
         """
         axis = self.axis
-        share = np.exp(2.0 * self.ln_sigma)[:, None] / self.sigma2
+        share = np.exp(2.0 * self.ln_sigma)[:, None] * axis.noise_profile**2 / self.sigma2
         weight = self.claims.sum(axis=(1, 3))
         misfit = (self.claims * self.inner * self.delta**2).sum(axis=(1, 3)) / self.sigma2
         fitted = np.trace(np.linalg.solve(matrix, of_lines), axis1=1, axis2=2)

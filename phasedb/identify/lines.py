@@ -72,15 +72,19 @@ def stack(tables: list[LineTable]) -> LineTable:
 
 
 def polarisation_factor(axis: Axis, x_true: FloatArray) -> FloatArray:
-    """Return the Lorentz-polarisation factor (1 + cos² 2theta)/(sin² theta cos theta); 1 on ln d.
+    """Return the Lorentz-polarisation factor (1 + cos² 2theta)/(sin² theta cos theta); 1 for rings.
 
     References
     ----------
     International Tables for Crystallography Vol. C (2006), section 6.2 (no monochromator, randomly oriented powder).
     """
-    if not axis.is_angle:
+    if axis.is_angle:
+        theta = np.radians(np.clip(x_true, 1.0, 178.0)) / 2.0
+    elif axis.likely_wavelength is not None:
+        sine = axis.likely_wavelength / 2.0 * np.exp(np.clip(x_true, -5.0, 5.0))
+        theta = np.arcsin(np.clip(sine, 0.01, 0.999))
+    else:
         return np.ones_like(x_true)
-    theta = np.radians(np.clip(x_true, 1.0, 178.0)) / 2.0
     return np.asarray((1.0 + np.cos(2.0 * theta) ** 2) / (np.sin(theta) ** 2 * np.cos(theta)))
 
 

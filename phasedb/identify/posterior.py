@@ -23,7 +23,7 @@ TRUST_SLOPE: Final = 28.0
 class WeightedSet:
     """A set with its posterior probability; `fit` is None for a combination that was not fitted itself.
 
-    `members` are the cubic phases that it holds. Where `only_looks_cubic`, the unlisted members of `fit` are
+    `members` are the cubic phases that it holds (zones of other lattices are not among them). Where `only_looks_cubic`, the unlisted members of `fit` are
     taken for lines of something that is not cubic, and are not among `members`.
     """
 
@@ -84,13 +84,14 @@ def make_posterior(search: Search, temperature: float) -> Posterior:
     sets: list[WeightedSet] = []
     for key, value in scaled.items():
         probability, fit = float(np.exp(value - total)), fits.get(key)
-        unlisted = [member for member in key if search.candidates.entry_of[member] < 0]
+        cubic = tuple(member for member in key if not search.candidates.is_zone(member))
+        unlisted = [member for member in cubic if search.candidates.is_unlisted(member)]
         if not unlisted:
-            sets.append(WeightedSet(key, probability, fit))
+            sets.append(WeightedSet(cubic, probability, fit))
             continue
         trust = _trust_in_cubic(search, fit, unlisted) if fit is not None else 0.5
-        rest = tuple(member for member in key if member not in unlisted)
-        sets.append(WeightedSet(key, probability * trust, fit))
+        rest = tuple(member for member in cubic if member not in unlisted)
+        sets.append(WeightedSet(cubic, probability * trust, fit))
         sets.append(WeightedSet(rest, probability * (1.0 - trust), fit, only_looks_cubic=True))
     sets.sort(key=lambda item: (-item.probability, item.members, item.only_looks_cubic))
     return Posterior(tuple(sets), total)
@@ -105,7 +106,9 @@ def _trust_in_cubic(search: Search, fit: Fitted, unlisted: list[int]) -> float:
     batch, row = fit.batch, fit.row
     places = [place for place, member in enumerate(fit.members) if member in unlisted]
     claimed = float((batch.claims[row, places].sum(axis=(0, 2)) > 0.5).sum())
-    unexplained = float((batch.background[row] > 0.5).sum())
+    zones = [place for place, member in enumerate(fit.members) if search.candidates.is_zone(member)]
+    left = batch.background[row] + batch.claims[row, zones].sum(axis=(0, 2))
+    unexplained = float((left > 0.5).sum())
     share = max(unexplained - 1.0, 0.0) / max(claimed + unexplained, 1.0)
     return float(1.0 / (1.0 + np.exp(TRUST_SLOPE * (share - TRUST_HALF))))
 

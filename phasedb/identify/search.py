@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from phasedb.crystal.lattice import LATTICE_TYPES
+from phasedb.identify import zones
 from phasedb.identify.archetypes import archetypes
 from phasedb.identify.axis import KIND_LINE, Axis
 from phasedb.identify.curve import A_LARGEST, A_SMALLEST, Cell, Curve, peaks_of, vote
@@ -27,6 +28,7 @@ from phasedb.identify.likelihood import (
 )
 from phasedb.identify.lines import LineTable, make_lines, stack
 from phasedb.identify.result import AxisCurve
+from phasedb.identify.zones import ZONES, zone_pattern
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -38,6 +40,8 @@ LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
 N_SINGLE: Final = 70  # proposals evaluated as first phase
 N_NEXT: Final = 36  # proposals evaluated as a further phase
 N_UNLISTED: Final = 5  # places of each lattice type evaluated as unlisted
+N_ZONES: Final = 3  # places of each kind of non-cubic zone
+MOST_ZONES: Final = 2  # in one set
 N_PATTERNS: Final = 5  # line patterns tried for each of them
 N_PARENTS: Final = 6
 N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
@@ -47,12 +51,17 @@ MOST_ISOTYPIC: Final = 6
 ISOTYPIC_SCATTER: Final = 1.3
 PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
+FAR_BELOW_FIRST: Final = 60.0  # votes (nats) below the best proposal that are not worth an evaluation
+FAR_BELOW: Final = 30.0
 # nats in the rough evidence below the best, beyond which a set is not fitted to the end
 MARGIN_SINGLE: Final = 40.0
 MARGIN_NEXT: Final = 20.0
 MARGIN_FINAL: Final = 14.0
 HOPELESS: Final = 12.0  # sets this far (nats) below the best are not grown
 STARTS: Final = 2
+
+UNLISTED: Final = -1
+ZONE: Final = -2
 
 Key = tuple[int, ...]
 
@@ -115,21 +124,27 @@ class Candidates:
         self._tables: list[LineTable] = []
         self._stacked: Pool | None = None
         self._columns: list[tuple[float, float, float, float, float, float, float, bool]] = []
-        self.entry_of: list[int] = []  # -1 for unlisted
+        self.entry_of: list[int] = []  # UNLISTED and ZONE for what is not in the library
         self.lattice_of: list[int] = []
         self.pattern_of: list[int] = []  # which line pattern an unlisted phase is given
+        self.unlisted_pattern: dict[int, Pattern] = {}  # the same, by pool number
         self._of_entry: dict[int, int] = {}
         self._of_place: dict[tuple[int, int], list[int]] = {}
 
-    def add_entries(self, indices: Iterable[int]) -> list[int]:
-        """Return pool numbers of listed entries, making their lines if they are new."""
+    def add_entries(self, indices: Iterable[int], doubles: dict[int, int] | None = None) -> list[int]:
+        """Return pool numbers of listed entries, making their lines if they are new.
+
+        `doubles` gives, for entries without a structure, an unlisted phase that was fitted at their place: the
+        entry takes over its line pattern, else it could lose to a double of itself that knows its lines better.
+        """
         wanted = list(indices)
         new = [index for index in dict.fromkeys(wanted) if index not in self._of_entry]
         if new:
             e = self.entries
             rows = np.array(new)
-            self._tables.append(make_lines(self.axis, e.ln_a[rows], [e.pattern(index) for index in new]))
-            for index in new:
+            own = [self._pattern_of_entry(index, (doubles or {}).get(index)) for index in new]
+            self._tables.append(make_lines(self.axis, e.ln_a[rows], [(one.n, one.strength) for one in own]))
+            for index, pattern in zip(new, own, strict=True):
                 self._of_entry[index] = len(self._columns)
                 self._columns.append(
                     (
@@ -138,8 +153,8 @@ class Candidates:
                         float(e.largest_drift[index]),
                         float(e.ln_a_low[index]),
                         float(e.ln_a_high[index]),
-                        float(e.ln_odds[index]),
-                        1.0 if e.has_structure(index) else PATTERN_SCATTER,
+                        float(e.ln_odds[index]) + pattern.ln_weight,
+                        pattern.scatter,
                         False,
                     )
                 )
@@ -178,10 +193,43 @@ class Candidates:
                 )
                 self.entry_of.append(-1)
                 self.lattice_of.append(lattice)
+                self.unlisted_pattern[len(self.pattern_of)] = patterns[row]
                 self.pattern_of.append(row)
             self._of_place[place] = numbers
             self._stacked = None
         return self._of_place[place]
+
+    def is_new(self, index: int) -> bool:
+        """Return whether an entry is not in the pool yet."""
+        return index not in self._of_entry
+
+    def _pattern_of_entry(self, index: int, double: int | None) -> Pattern:
+        entries = self.entries
+        if not entries.has_structure(index) and double is not None:
+            return self.unlisted_pattern[double]
+        scatter = 1.0 if entries.has_structure(index) else PATTERN_SCATTER
+        return Pattern(*entries.pattern(index), 0.0, scatter)
+
+    def add_zone(self, zone: int, ln_a: float) -> int:
+        """Return the pool number of a zone of a non-cubic lattice at a place."""
+        row = len(LATTICE_TYPES) + zone
+        place = (row, round(ln_a / SAME_PLACE))
+        if place not in self._of_place:
+            self._tables.append(make_lines(self.axis, np.array([ln_a]), [zone_pattern(ZONES[zone])]))
+            density = float(np.log(zones.EXPECTED / np.log(zones.A_LARGEST / zones.A_SMALLEST)))
+            self._of_place[place] = [len(self._columns)]
+            self._columns.append((ln_a, 0.0, 1.0, ln_a, ln_a, density, zones.SCATTER, True))
+            self.entry_of.append(ZONE)
+            self.lattice_of.append(row)
+            self.pattern_of.append(-1)
+            self._stacked = None
+        return self._of_place[place][0]
+
+    def is_unlisted(self, member: int) -> bool:
+        return self.entry_of[member] == UNLISTED
+
+    def is_zone(self, member: int) -> bool:
+        return self.entry_of[member] == ZONE
 
     def _patterns(self, lattice: int, ln_a: float) -> list[Pattern]:
         """Return the line patterns that an unlisted phase may have: archetypes, and those of entries nearby."""
@@ -255,11 +303,14 @@ class Search:
         always: tuple[int, ...] = (),
         places_of_each_lattice: int = N_UNLISTED,
         expected_unlisted: float = EXPECTED_UNLISTED,
+        zones_of_each_kind: int = N_ZONES,
     ) -> None:
         self.axis = axis
         self.entries = entries
         self.candidates = Candidates(axis, entries, expected_unlisted)
         self.n_places = places_of_each_lattice
+        self.n_zones = zones_of_each_kind
+        self.first_unlisted: list[Fitted] = []
         self.most_phases = most_phases
         self.always = tuple(self.candidates.add_entries(always))
         self.empty = empty_log_likelihood(axis)
@@ -332,11 +383,31 @@ class Search:
         known_ln_a = tuple(float(value) for value in parent.ln_a) if parent is not None else ()
         result: list[tuple[float, Start]] = []
         scores, places, which_cell = self._screen(curves)
+        unlisted: list[tuple[float, Start]] = []
+        n_unlisted = sum(self.candidates.is_unlisted(member) for member in known)
+        result += self._propose_zones(curves, known, known_ln_a)
+        if n_unlisted < 2:
+            for lattice in range(3):
+                for score, ln_a, cell in peaks_of(curves, lattice, most=self.n_places, separation=SAME_PLACE):
+                    near = [
+                        member
+                        for member, value in zip(known, known_ln_a, strict=True)
+                        if self.candidates.lattice_of[member] == lattice and abs(value - ln_a) < SAME_PLACE
+                    ]
+                    if near:
+                        continue
+                    for number in self.candidates.add_unlisted(lattice, ln_a, cell):
+                        start = Start(
+                            (*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma))
+                        )
+                        unlisted.append((score, start))
+        if parent is None and not self.always:
+            self.first_unlisted = self._evaluate([start for _, start in unlisted], MARGIN_SINGLE)
         taken = {self.candidates.entry_of[member] for member in known}
         best = scores.max(axis=0)
         order = [int(i) for i in np.argsort(-best, kind="stable") if int(i) not in taken][:n_listed]
         order = [index for index in order if np.isfinite(best[index])]
-        numbers = self.candidates.add_entries(order)
+        numbers = self.candidates.add_entries(order, self._doubles_of(order))
         for index, number in zip(order, numbers, strict=True):
             ranked = np.argsort(-scores[:, index], kind="stable")
             used: list[Cell] = []
@@ -352,24 +423,45 @@ class Search:
                     float(np.log(cell.sigma)),
                 )
                 result.append((float(scores[which, index]), start))
-        n_unlisted = sum(self.candidates.entry_of[member] < 0 for member in known)
-        if n_unlisted < 2:
-            for lattice in range(3):
-                for score, ln_a, cell in peaks_of(curves, lattice, most=self.n_places, separation=SAME_PLACE):
-                    near = [
-                        member
-                        for member, value in zip(known, known_ln_a, strict=True)
-                        if self.candidates.lattice_of[member] == lattice and abs(value - ln_a) < SAME_PLACE
-                    ]
-                    if near:
-                        continue
-                    for number in self.candidates.add_unlisted(lattice, ln_a, cell):
-                        start = Start(
-                            (*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma))
-                        )
-                        result.append((score, start))
-        self._proposals[key] = result
-        return result
+        result += unlisted
+        top = max((score for score, _ in result), default=0.0)
+        floor = top - (FAR_BELOW_FIRST if parent is None else FAR_BELOW)
+        self._proposals[key] = [item for item in result if item[0] > floor]
+        return self._proposals[key]
+
+    def _doubles_of(self, indices: list[int]) -> dict[int, int]:
+        """Return, for new entries without a structure, the best unlisted phase that was fitted at their place."""
+        entries, candidates = self.entries, self.candidates
+        bare = [i for i in indices if candidates.is_new(i) and not entries.has_structure(i)]
+        if not bare:
+            return {}
+        best: dict[int, tuple[float, int]] = {}
+        for fit in self.found.values():
+            for member, ln_a in zip(fit.members, fit.ln_a, strict=True):
+                if candidates.entry_of[member] >= 0:
+                    continue
+                for index in bare:
+                    near = abs(float(ln_a) - float(entries.ln_a[index])) < float(entries.largest_drift[index])
+                    if near and candidates.lattice_of[member] == int(entries.lattice[index]):
+                        best[index] = max(best.get(index, (-np.inf, -1)), (fit.log_evidence, member))
+        return {index: member for index, (_, member) in best.items()}
+
+    def _propose_zones(
+        self, curves: list[Curve], known: tuple[int, ...], known_ln_a: tuple[float, ...]
+    ) -> list[tuple[float, Start]]:
+        if self.n_zones == 0 or sum(self.candidates.is_zone(member) for member in known) >= MOST_ZONES:
+            return []
+        found = []
+        low, high = np.log(zones.A_SMALLEST), np.log(zones.A_LARGEST)
+        for zone in range(len(ZONES)):
+            row = len(LATTICE_TYPES) + zone
+            for score, ln_a, cell in peaks_of(curves, row, most=self.n_zones, separation=SAME_PLACE):
+                if not low < ln_a < high:
+                    continue
+                number = self.candidates.add_zone(zone, ln_a)
+                start = Start((*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma)))
+                found.append((score, start))
+        return found
 
     def _screen(self, curves: list[Curve]) -> tuple[FloatArray, FloatArray, IntArray]:
         """Return the best score of each entry in each group of cells, its ln a, and the cell.
@@ -495,7 +587,7 @@ class Search:
     def _first_level(self) -> list[Fitted]:
         starts = [start for _, start in self._propose((), N_SINGLE)]
         if not self.always:
-            return self._evaluate(starts, MARGIN_SINGLE)
+            return [*self.first_unlisted, *self._evaluate(starts, MARGIN_SINGLE)]
         (standard,) = self.always
         own = [start for start in starts if start.members == (standard,)]
         ln_a = float(self.candidates.pool.ln_a[standard])
