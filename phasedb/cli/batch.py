@@ -1,4 +1,9 @@
-"""``phasedb batch``: match a folder of lists in parallel, one table out."""
+"""``phasedb batch``: match a folder of lists in parallel, one table out.
+
+The table's columns are `phasedb.report.batch_table.COLUMNS`; a line of JSON is ``phasedb.batch-row/1``: file,
+sha256, status (matched or failed), match (``phasedb.match/1``) or error (what, where, hint). ``--json`` sums
+up as ``phasedb.batch/1``: output, lists, taken_up (finished in an earlier run), matched, failed.
+"""
 
 from __future__ import annotations
 

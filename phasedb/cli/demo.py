@@ -1,4 +1,7 @@
-"""``phasedb demo``: the main job from end to end, on invented samples, in a library that is thrown away."""
+"""``phasedb demo``: the main job from end to end, on invented samples, in a library that is thrown away.
+
+``--json`` gives ``phasedb.demo/1``: steps, each with says, command and result (that command's own document).
+"""
 
 from __future__ import annotations
 

@@ -1,4 +1,7 @@
-"""``phasedb report``: a self-contained page of a match."""
+"""``phasedb report``: a self-contained page of a match.
+
+``--json`` tells what was written as ``phasedb.report/1``: file, bytes.
+"""
 
 from __future__ import annotations
 
@@ -80,6 +83,8 @@ def report(
             "a report is of a peak list or of a saved identification, one of them",
             hint="give PEAKS or --identification ID",
         )
+    if not Path(output).absolute().parent.is_dir():
+        raise InputError("no such folder to write the page in", where=output, hint="choose another -o")
     library = open_library(ctx, as_of=asked.as_of)
     if identification is not None:
         found = saved_match(library, identification)

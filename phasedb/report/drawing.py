@@ -70,9 +70,13 @@ _LOOK: Final[dict[str, Any]] = {
 @contextmanager
 def look() -> Iterator[None]:
     """Draw inside this: the settings of all our figures, and none of the user's own."""
+    import warnings
+
     import matplotlib as mpl
 
-    with mpl.rc_context():
+    with mpl.rc_context(), warnings.catch_warnings():
+        # the font lacks some scripts: a page's reader has them, and a paper's figure shows boxes
+        warnings.filterwarnings("ignore", "Glyph .* missing from font", UserWarning)
         mpl.rcdefaults()
         settings: Any = mpl.rcParams
         settings.update(_LOOK)

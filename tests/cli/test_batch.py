@@ -14,25 +14,11 @@ import pytest
 from running import run
 
 from phasedb.cli.progress import Progress
-from phasedb.library import Library
-
-ELEMENTS = ("--elements", "Ti,N,Fe,C,Ag")
 
 
 def write_list(path, positions):
     rows = "\n".join(f"{x:.3f},{100 - i}" for i, x in enumerate(positions))
     path.write_text(f"# radiation: Cu\n# range: 30 100\ntwo_theta_deg,intensity\n{rows}\n")
-
-
-@pytest.fixture(scope="module")
-def small_store(tmp_path_factory):
-    """Two phases only, so that a list costs little."""
-    path = tmp_path_factory.mktemp("small") / "library.sqlite"
-    Library.create(path, by="Ann", starter=False).close()
-    for name, formula, lattice, a in (("silver", "Ag", "F", "4.0862"), ("iron", "Fe", "I", "2.8665")):
-        ran = run("add", "--name", name, "--formula", formula, "--lattice", lattice, "--a", a, store=path)
-        assert ran.code == 0, ran.err
-    return path
 
 
 @pytest.fixture

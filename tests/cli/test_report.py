@@ -63,16 +63,16 @@ def test_a_saved_identification_gives_a_page_without_its_file(store, knife, tmp_
     assert "The curve was not kept" not in text
 
 
-def test_the_date_can_be_given_and_then_the_bytes_repeat(starter_store, knife, tmp_path):
+def test_the_date_can_be_given_and_then_the_bytes_repeat(small_store, knife, tmp_path):
     for name in "ab":
-        run("report", knife, "-o", tmp_path / f"{name}.html", "--issued", "2026-12-24", store=starter_store)
+        run("report", knife, "-o", tmp_path / f"{name}.html", "--issued", "2026-12-24", store=small_store)
     a, b = ((tmp_path / f"{name}.html").read_bytes() for name in "ab")
     assert a == b
     assert b"issued 2026-12-24" in a
 
 
-def test_json_says_what_was_written(starter_store, knife, tmp_path):
-    ran = run("report", knife, "-o", tmp_path / "a.html", "--json", store=starter_store)
+def test_json_says_what_was_written(small_store, knife, tmp_path):
+    ran = run("report", knife, "-o", tmp_path / "a.html", "--json", store=small_store)
     assert ran.json["schema"] == "phasedb.report/1"
     assert ran.json["bytes"] == (tmp_path / "a.html").stat().st_size
 
@@ -83,23 +83,23 @@ def test_json_says_what_was_written(starter_store, knife, tmp_path):
         ([], 2, "-o"),
         (["-o", "a.html"], 2, "PEAKS or --identification"),
         (["absent.csv", "-o", "a.html"], 2, "absent.csv"),
-        (["{knife}", "-o", "absent/a.html"], 2, "cannot write"),
+        (["{knife}", "-o", "absent/a.html"], 2, "no such folder"),
         (["{knife}", "--identification", "1", "-o", "a.html"], 2, "one of them"),
         (["--identification", "77", "-o", "a.html"], 2, "77"),
     ],
 )
-def test_bad_usage(starter_store, knife, tmp_path, monkeypatch, words, code, said):
+def test_bad_usage(small_store, knife, tmp_path, monkeypatch, words, code, said):
     monkeypatch.chdir(tmp_path)
-    ran = run("report", *(word.format(knife=knife) for word in words), store=starter_store)
+    ran = run("report", *(word.format(knife=knife) for word in words), store=small_store)
     assert ran.code == code
     assert said in ran.err
     assert list(tmp_path.iterdir()) == []
 
 
-def test_foreign_lines_are_drawn_and_marked(starter_store, knife, tmp_path):
+def test_foreign_lines_are_drawn_and_marked(small_store, knife, tmp_path):
     (tmp_path / "holder.csv").write_text("# radiation: Cu\ntwo_theta_deg\n33.159\n")
     words = ("--foreign", tmp_path / "holder.csv", "--elements", "Ti,N,Fe,C", "-o", tmp_path / "a.html")
-    ran = run("report", knife, *words, store=starter_store)
+    ran = run("report", knife, *words, store=small_store)
     assert ran.code == 0, ran.err
     text = (tmp_path / "a.html").read_text(encoding="utf-8")
     assert "foreign line" in text

@@ -8,7 +8,14 @@ import subprocess
 
 import pytest
 from browser import CHROMIUM, Browser
-from report.samples import d_only_match, hostile_match, nothing_match, two_phase_match, unlisted_match
+from report.samples import (
+    d_only_match,
+    foreign_script_match,
+    hostile_match,
+    nothing_match,
+    two_phase_match,
+    unlisted_match,
+)
 
 from phasedb.report.axis_figure import Entry
 from phasedb.report.page import PageFacts, ReportDetails, report_page
@@ -18,7 +25,7 @@ pytestmark = [
     pytest.mark.skipif(CHROMIUM is None, reason="headless Chromium is not installed here"),
 ]
 
-MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match]
+MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 STRIP = "document.getElementById('strip')"
 
 

@@ -274,6 +274,23 @@ def unlisted_match():
     )
 
 
+def foreign_script_match():
+    """Names in scripts that the figures' font lacks."""
+    base = two_phase_match()
+    names = {"titanium nitride": "氮化钛 (コーティング)", "alpha iron": "حديد"}
+    return dataclasses.replace(
+        base,
+        phases=tuple(dataclasses.replace(p, name=names.get(p.name, p.name)) for p in base.phases),
+        ledger=tuple(
+            dataclasses.replace(
+                line,
+                claims=tuple(dataclasses.replace(c, name=names[c.name]) for c in line.claims),
+            )
+            for line in base.ledger
+        ),
+    )
+
+
 def nothing_match():
     base = two_phase_match()
     ledger = tuple(dataclasses.replace(line, claims=(), unexplained=1.0) for line in base.ledger)

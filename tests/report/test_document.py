@@ -8,13 +8,20 @@ import json
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from report.samples import d_only_match, hostile_match, nothing_match, two_phase_match, unlisted_match
+from report.samples import (
+    d_only_match,
+    foreign_script_match,
+    hostile_match,
+    nothing_match,
+    two_phase_match,
+    unlisted_match,
+)
 
 from phasedb.errors import InputError
 from phasedb.report.document import AXIS_STEPS, DIGITS, document_bytes, match_document, rounded
 from phasedb.report.stored import match_from_document
 
-MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match]
+MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 
 # DESIGN's list of the fields that other programs rely on, as dotted paths ([] for each element).
 PROMISED = [

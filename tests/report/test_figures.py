@@ -9,7 +9,14 @@ from xml.etree import ElementTree
 
 import numpy as np
 import pytest
-from report.samples import d_only_match, hostile_match, nothing_match, two_phase_match, unlisted_match
+from report.samples import (
+    d_only_match,
+    foreign_script_match,
+    hostile_match,
+    nothing_match,
+    two_phase_match,
+    unlisted_match,
+)
 
 from phasedb.errors import InputError
 from phasedb.report import drawing
@@ -25,7 +32,7 @@ from phasedb.report.figures import (
 from phasedb.report.inline_svg import inline_svg
 from phasedb.report.matrix import matrix_figure
 
-MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match]
+MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 
 
 @pytest.mark.parametrize("make", MAKERS)

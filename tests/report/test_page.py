@@ -12,6 +12,7 @@ import pytest
 from report.samples import (
     HOSTILE,
     d_only_match,
+    foreign_script_match,
     hostile_match,
     nothing_match,
     two_phase_match,
@@ -24,7 +25,7 @@ from phasedb.report.page import PageFacts, ReportDetails, report_page
 from phasedb.report.stored import match_from_document
 from phasedb.report.table import printable
 
-MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match]
+MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 FACTS = PageFacts("2026-12-01", [Entry("x", "F", 4.0)], history_head="ab" * 32)
 
 

@@ -8,6 +8,7 @@ import re
 import pytest
 from report.samples import (
     d_only_match,
+    foreign_script_match,
     hostile_match,
     nothing_match,
     phase_result,
@@ -20,7 +21,7 @@ from phasedb.report.table import display_width
 from phasedb.report.text import match_text
 from phasedb.report.verdict import verdict
 
-MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match]
+MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 
 
 @pytest.mark.parametrize("make", MAKERS)
