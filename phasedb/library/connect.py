@@ -110,6 +110,8 @@ def open_sqlite(path: Path, *, write: bool) -> sqlite3.Connection:
     try:
         connection.execute("PRAGMA foreign_keys=ON")
         connection.execute("PRAGMA synchronous=FULL")
+        # a large write stays in memory until its commit: spilling would shut readers out all the while
+        connection.execute("PRAGMA cache_spill=OFF")
     except sqlite3.Error:
         connection.close()
         raise

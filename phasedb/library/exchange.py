@@ -6,7 +6,8 @@ of the plan in the caller's transaction.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any, Final
 
@@ -23,6 +24,7 @@ from phasedb.library.preparing import entry_of
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection
 
+    from phasedb.library.store import Library
     from phasedb.library.writing import Writing
 
 _ROWS_AT_ONCE: Final = 5000
@@ -299,6 +301,30 @@ def _differences(here: dict[str, Any], there: dict[str, Any]) -> str:
     return "; ".join(lines[:_FIELDS_SHOWN]) + more
 
 
+@contextmanager
+def planned_write(
+    library: Library, make: Callable[[Connection], Plan], judge: Callable[[Plan], None]
+) -> Iterator[tuple[Writing, Plan]]:
+    """Give an open write transaction and the plan that holds in it.
+
+    Planning takes most of the time, so it is done before others are kept from writing; if they wrote in the
+    meantime it is done again.
+
+    Parameters
+    ----------
+    judge : callable
+        Raises if the plan must not be carried out.
+    """
+    with library.reading() as connection:
+        found, head = make(connection), library.history_head
+    judge(found)
+    with library.begin_write() as writing:
+        if writing.history_head != head:
+            found = make(writing.connection)
+            judge(found)
+        yield writing, found
+
+
 def write_plan(
     writing: Writing,
     found: Plan,
@@ -322,7 +348,10 @@ def write_plan(
     for row in found.warnings:
         warned.setdefault((row.file, row.row), []).append(row.warning)
     for start in range(0, len(found.new), _ROWS_AT_ONCE):
-        chunk = found.new[start : start + _ROWS_AT_ONCE]
+        chunk = [
+            (c, entry if c.entry is not None else replace(entry, entered_at=writing.at))
+            for c, entry in found.new[start : start + _ROWS_AT_ONCE]
+        ]
         said = [
             "; ".join(part for part in (remark(c), accepted_text(warned.get((c.file, c.row), ()))) if part)
             for c, _ in chunk

@@ -10,13 +10,16 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final, Literal, get_args
 
 from phasedb.errors import InputError
-from phasedb.library.exchange import Past, Plan, RowWarning, plan, write_plan
+from phasedb.library.exchange import Past, Plan, RowWarning, plan, planned_write, write_plan
 from phasedb.library.exchange_history import ForeignHistory, carry, read_history
 from phasedb.library.exchange_known import uids_here
 from phasedb.library.exchange_measurements import bring_measurements, read_measurements
 from phasedb.library.exchange_rows import BadRow, Candidate
+from phasedb.library.people import now_utc
 
 if TYPE_CHECKING:
+    from sqlalchemy.engine import Connection
+
     from phasedb.library.store import Library
     from phasedb.library.writing import Writing
 
@@ -150,18 +153,19 @@ def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say
     read = _Read()
     for file in files:
         _read_file(file, read, say)
-    if read.bad and not skip_bad and not read.candidates:
-        raise BadRowsError(read.bad, read.total)
     sha256 = {file.name: file.sha256[:16] for file in files}
     measured = 0
     carried = 0
-    with library.begin_write() as writing:
-        found = plan(
-            writing.connection, read.candidates, by=writing.person.who, at=writing.at, past=_past(read)
-        )
-        bad = sorted([*read.bad, *found.clashes], key=lambda row: (row.file, row.row))
-        if bad and not skip_bad:
-            raise BadRowsError(bad, read.total)
+
+    def make(connection: Connection) -> Plan:
+        who, at = library.person.who, now_utc()
+        return plan(connection, read.candidates, by=who, at=at, past=_past(read))
+
+    def judge(found: Plan) -> None:
+        if not skip_bad and (read.bad or found.clashes):
+            raise BadRowsError(_all_bad(read, found), read.total)
+
+    with planned_write(library, make, judge) as (writing, found):
         _write(writing, found, sha256, say)
         for file in files:
             remark = f"from {file.name} (sha256 {sha256[file.name]})"
@@ -176,12 +180,16 @@ def _import(library: Library, files: Sequence[GivenFile], *, skip_bad: bool, say
         newer=len(found.newer),
         same=len(found.same),
         older=len(found.older),
-        left_out=tuple(bad),
+        left_out=tuple(_all_bad(read, found)),
         warnings=tuple(found.warnings),
         notes=(*read.notes, *found.remarks),
         measurements=measured,
         carried=carried,
     )
+
+
+def _all_bad(read: _Read, found: Plan) -> list[BadRow]:
+    return sorted([*read.bad, *found.clashes], key=lambda row: (row.file, row.row))
 
 
 def _silent(what: str, done: int, total: int) -> None:

@@ -5,18 +5,20 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from phasedb.errors import InputError, RuleRefusedError, StoreError
 from phasedb.library import connect
 from phasedb.library.audit import audit
-from phasedb.library.exchange import Plan, plan, write_plan
+from phasedb.library.exchange import Plan, plan, planned_write, write_plan
 from phasedb.library.exchange_history import CARRIED_KIND, ForeignHistory, carry, history_rows
 from phasedb.library.exchange_measurements import bring_measurements, measurements_of
 from phasedb.library.exchange_rows import BadRow, Candidate, whole_content
 from phasedb.library.preparing import Prepared
 
 if TYPE_CHECKING:
+    from sqlalchemy.engine import Connection
+
     from phasedb.library.entry import Entry
     from phasedb.library.store import Library
     from phasedb.library.writing import Writing
@@ -110,12 +112,17 @@ def merge(
         if announce is not None:
             announce(found_plan)
         return Merged(found_plan, tuple(found_plan.clashes), 0, 0, False)
-    with library.begin_write() as writing:
-        found_plan = _plan(writing.connection, candidates, foreign)
+
+    def judge(found_plan: Plan) -> None:
         if announce is not None:
             announce(found_plan)
         if found_plan.clashes and not keep_ours:
             raise ClashesRefusedError(found_plan.clashes)
+
+    def make(connection: Connection) -> Plan:
+        return _plan(connection, candidates, foreign)
+
+    with planned_write(library, make, judge) as (writing, found_plan):
         _write(writing, found_plan, origin, progress)
         brought = _uids(found_plan)
         measured = bring_measurements(writing, measurements, brought, action="merged", remark=origin)
@@ -150,7 +157,7 @@ def _candidate(entry: Entry, place: str) -> Candidate:
     return Candidate(place, 0, prepared, entry, project=whole_content)
 
 
-def _plan(connection: Any, candidates: Sequence[Candidate], foreign: ForeignHistory) -> Plan:
+def _plan(connection: Connection, candidates: Sequence[Candidate], foreign: ForeignHistory) -> Plan:
     # by and at are for entries without custody; those of a library have theirs
     return plan(connection, candidates, by="", at="", past=foreign.past)
 
