@@ -28,6 +28,7 @@ from phasedb.identify.likelihood import (
 )
 from phasedb.identify.lines import LineTable, make_lines, stack
 from phasedb.identify.result import AxisCurve
+from phasedb.identify.strongest import Strongest, screen, strongest_lines
 from phasedb.identify.zones import ZONES, zone_pattern
 
 FloatArray = NDArray[np.float64]
@@ -38,13 +39,15 @@ UNLISTED_LATTICE: Final = {"P": 0.27, "I": 0.23, "F": 0.50}  # roughly as in the
 LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
 
 N_SINGLE: Final = 70  # proposals evaluated as first phase
-N_NEXT: Final = 36  # proposals evaluated as a further phase
+N_NEXT: Final = 24  # proposals evaluated as a further phase
+N_BY_STRONGEST: Final = 10  # further ones, whose strongest lines are in the list
 N_UNLISTED: Final = 5  # places of each lattice type evaluated as unlisted
 N_ZONES: Final = 3  # places of each kind of non-cubic zone
 MOST_ZONES: Final = 2  # in one set
 N_PATTERNS: Final = 5  # line patterns tried for each of them
-N_PARENTS: Final = 6
-N_FINAL: Final = 6  # sets whose members are exchanged one by one at the end
+NOTHING_LEFT: Final = 0.6  # lines unexplained below which a set is not grown
+N_PARENTS: Final = 4
+N_FINAL: Final = 4  # sets whose members are exchanged one by one at the end
 ISOTYPIC_WEIGHT: Final = 0.3  # of the patterns of an unlisted phase: those of entries near its a
 ISOTYPIC_REACH: Final = 0.05  # ln a
 MOST_ISOTYPIC: Final = 6
@@ -52,12 +55,12 @@ ISOTYPIC_SCATTER: Final = 1.3
 PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
 FAR_BELOW_FIRST: Final = 60.0  # votes (nats) below the best proposal that are not worth an evaluation
-FAR_BELOW: Final = 30.0
+FAR_BELOW: Final = 20.0
 # nats in the rough evidence below the best, beyond which a set is not fitted to the end
 MARGIN_SINGLE: Final = 40.0
 MARGIN_NEXT: Final = 20.0
 MARGIN_FINAL: Final = 14.0
-HOPELESS: Final = 12.0  # sets this far (nats) below the best are not grown
+HOPELESS: Final = 9.0  # sets this far (nats) below the best are not grown
 STARTS: Final = 2
 
 UNLISTED: Final = -1
@@ -316,6 +319,7 @@ class Search:
         self.empty = empty_log_likelihood(axis)
         self.found: dict[Key, Fitted] = {}
         self.first_curves: list[Curve] = []
+        self._strongest: Strongest | None = None
         self._proposals: dict[Key, list[tuple[float, Start]]] = {}
 
     # -- proposals -------------------------------------------------------------------------------
@@ -423,6 +427,7 @@ class Search:
                     float(np.log(cell.sigma)),
                 )
                 result.append((float(scores[which, index]), start))
+        result += self._propose_by_strongest(cells, base, explained, (known, known_ln_a), {*taken, *order})
         result += unlisted
         top = max((score for score, _ in result), default=0.0)
         floor = top - (FAR_BELOW_FIRST if parent is None else FAR_BELOW)
@@ -445,6 +450,36 @@ class Search:
                     if near and candidates.lattice_of[member] == int(entries.lattice[index]):
                         best[index] = max(best.get(index, (-np.inf, -1)), (fit.log_evidence, member))
         return {index: member for index, (_, member) in best.items()}
+
+    def _propose_by_strongest(
+        self,
+        cells: list[Cell],
+        base: FloatArray,
+        explained: FloatArray,
+        known: tuple[tuple[int, ...], tuple[float, ...]],
+        done: set[int],
+    ) -> list[tuple[float, Start]]:
+        """Return entries whose own strongest lines are in the list, beyond those proposed by votes."""
+        if len(self.entries) == 0:
+            return []
+        if self._strongest is None:
+            self._strongest = strongest_lines(self.axis, self.entries)
+        scores = np.array(
+            [
+                screen(self.axis, self.entries, self._strongest, cell, base, explained) + cell.ln_prior
+                for cell in cells
+            ]
+        )
+        best = scores.max(axis=0)
+        order = [int(i) for i in np.argsort(-best, kind="stable")[: N_BY_STRONGEST + len(done)]]
+        chosen = [i for i in order if i not in done and best[i] > 0.0][:N_BY_STRONGEST]
+        found = []
+        for index, number in zip(chosen, self.candidates.add_entries(chosen), strict=True):
+            cell = cells[int(scores[:, index].argmax())]
+            ln_a = float(self.entries.ln_a[index])
+            start = Start((*known[0], number), cell.phi, (*known[1], ln_a), float(np.log(cell.sigma)))
+            found.append((float(best[index]), start))
+        return found
 
     def _propose_zones(
         self, curves: list[Curve], known: tuple[int, ...], known_ln_a: tuple[float, ...]
@@ -573,7 +608,11 @@ class Search:
             [self.empty, *(fit.log_evidence for fit in level)] if not self.always else [level[0].log_evidence]
         )
         for _ in range(1, self.most_phases):
-            parents = self._distinct(level, N_PARENTS, best - HOPELESS)
+            parents = [
+                fit for fit in self._distinct(level, N_PARENTS, best - HOPELESS) if self._leaves_lines(fit)
+            ]
+            if not parents:
+                break
             starts = [start for parent in parents for _, start in self._propose(parent.key, N_NEXT)]
             level = self._evaluate(starts, MARGIN_NEXT)
             if not level:
@@ -583,6 +622,10 @@ class Search:
                 break
             best = max(best, top)
         self._exchange(best)
+
+    def _leaves_lines(self, fit: Fitted) -> bool:
+        """Return whether a set leaves anything for a further phase to explain."""
+        return float(fit.batch.background[fit.row].sum()) > NOTHING_LEFT
 
     def _first_level(self) -> list[Fitted]:
         starts = [start for _, start in self._propose((), N_SINGLE)]
