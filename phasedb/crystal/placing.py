@@ -47,7 +47,9 @@ def _from_names(
     values = kind.parameters | named
     return tuple(
         Placed(
-            ", ".join(sorted(names)), next(iter(choice.shares[slot.site.role])), evaluate(slot.site.position, values)
+            ", ".join(sorted(names)),
+            next(iter(choice.shares[slot.site.role])),
+            evaluate(slot.site.position, values),
         )
         for slot in slots
         if (names := _parameters_of(slot.site) & named.keys())

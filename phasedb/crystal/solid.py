@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from phasedb.crystal.formula import Formula, parse_formula
 from phasedb.crystal.lattice import ATOMS_PER_CELL, LatticeType
 from phasedb.crystal.phases import Phase, Structure
-from phasedb.crystal.structure import cell_atoms, cell_contents
+from phasedb.crystal.structure import cell_atoms, cell_contents, site_multiplicity
 
 FloatArray = NDArray[np.float64]
 
@@ -24,7 +24,13 @@ _A3_TO_CM3: Final = 1e-24
 SAME_SHELL: Final = 0.01
 """Neighbours within this part of the shortest distance are one shell (common practice, no source)."""
 TOO_CLOSE_ANGSTROM: Final = 1.3
-"""Partly filled places nearer than this exclude each other: split sites, disorder (common practice)."""
+TOO_CLOSE_OF_A: Final = 0.35
+"""Partly filled places nearer than this exclude each other: split sites, disorder; the part
+of a keeps a cell whose unit was mistyped from losing all its neighbours (common practice)."""
+
+RARE: Final = (0.5, 0.1)
+"""A site filled less than this, holding less than this part of all atoms, is rare: carbon in austenite. It does
+not decide which atoms touch (common practice, no source)."""
 
 EQUAL_SPHERES: Final[dict[LatticeType, tuple[int, float]]] = {
     "P": (6, pi / 6.0),
@@ -109,15 +115,33 @@ def packing_fraction(structure: Structure, a_angstrom: float, radii_angstrom: Ma
     return filled / a_angstrom**3
 
 
+def _atoms_of_sites(structure: Structure) -> FloatArray:
+    return np.array(
+        [
+            site_multiplicity(structure.space_group, site.position) * sum(part for _, part in site.species)
+            for site in structure.sites
+        ]
+    )
+
+
+def _rare_sites(structure: Structure) -> NDArray[np.bool_]:
+    atoms = _atoms_of_sites(structure)
+    filling = np.array([sum(part for _, part in site.species) for site in structure.sites])
+    rare: NDArray[np.bool_] = (filling < RARE[0]) & (atoms < RARE[1] * atoms.sum())
+    return rare
+
+
 def nearest_neighbours(structure: Structure, a_angstrom: float) -> tuple[Neighbours, ...]:
     """Return the nearest neighbours of each site.
 
     Places that cannot be filled at once (their occupancies sum to at most 1 and they lie within 1.3 Å) do not
-    count as neighbours; others count with their occupancy.
+    count as neighbours, nor do rare atoms; others count with their occupancy.
     """
     atoms = cell_atoms(structure)
     filling = np.array([sum(part for _, part in site.species) for site in structure.sites])
     occupancy = filling[atoms.site]
+    rare = _rare_sites(structure)[atoms.site]
+    too_close = min(TOO_CLOSE_ANGSTROM, TOO_CLOSE_OF_A * a_angstrom)
     steps = np.array(list(np.ndindex(3, 3, 3)), dtype=np.float64) - 1.0
     home = int(np.flatnonzero((steps == 0).all(axis=1))[0])
     found = []
@@ -126,8 +150,8 @@ def nearest_neighbours(structure: Structure, a_angstrom: float) -> tuple[Neighbo
         offsets = atoms.positions[:, None, :] + steps[None, :, :] - atoms.positions[start]
         distance = a_angstrom * np.sqrt((offsets**2).sum(axis=2))
         distance[start, home] = np.inf
-        exclusive = (occupancy + occupancy[start] <= 1.0 + 1e-6)[:, None] & (distance < TOO_CLOSE_ANGSTROM)
-        distance[exclusive] = np.inf
+        exclusive = (occupancy + occupancy[start] <= 1.0 + 1e-6)[:, None] & (distance < too_close)
+        distance[exclusive | rare[:, None]] = np.inf
         shortest = float(distance.min())
         shell, _ = np.nonzero(distance <= shortest * (1.0 + SAME_SHELL))
         kinds = sorted({int(kind) for kind in atoms.site[shell]})
@@ -150,8 +174,9 @@ def solid_of(phase: Phase) -> Solid:
     if structure is None:
         return Solid(atoms, units, density, None, None)
     nearest = nearest_neighbours(structure, phase.a_angstrom)
-    radius = min(neighbours.distance_angstrom for neighbours in nearest) / 2.0
-    placed = sum(cell_contents(structure).values())
+    usual = ~_rare_sites(structure)
+    radius = min(near.distance_angstrom for near, kept in zip(nearest, usual, strict=True) if kept) / 2.0
+    placed = float(_atoms_of_sites(structure)[usual].sum())
     filled = placed * 4.0 / 3.0 * pi * radius**3 / phase.a_angstrom**3
     return Solid(atoms, units, density, filled, radius, nearest)
 

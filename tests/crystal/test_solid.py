@@ -82,6 +82,20 @@ def test_vacancies_and_split_sites_count_with_their_occupancy():
     assert oxygen.distance_angstrom > 3.0
 
 
+def test_a_mistyped_cell_with_vacancies_still_has_neighbours():
+    half = Structure("F m -3 m", (Site("Cu1", (("Cu", 0.5),), (0.0, 0.0, 0.0)),))
+    assert nearest_neighbours(half, 0.3615)[0].distance_angstrom == pytest.approx(0.3615 / np.sqrt(2))
+
+
+def test_a_little_carbon_does_not_decide_which_atoms_touch():
+    austenite = solid_of(phase("Fe0.96C0.04", "F", 3.6, "A1"))
+    assert austenite.sphere_radius_angstrom == pytest.approx(3.6 / np.sqrt(8))
+    assert austenite.packing_fraction == pytest.approx(0.7405, abs=5e-5)
+    iron, carbon = austenite.nearest
+    assert (iron.to, iron.count) == (("Fe",), 12.0)
+    assert (carbon.to, carbon.count, carbon.distance_angstrom) == (("Fe",), 6.0, pytest.approx(1.8))
+
+
 @pytest.mark.parametrize(
     ("name", "density"),
     # CRC Handbook of Chemistry and Physics (from memory), g/cm³ near 298 K
