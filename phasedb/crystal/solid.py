@@ -29,8 +29,8 @@ TOO_CLOSE_OF_A: Final = 0.35
 of a keeps a cell whose unit was mistyped from losing all its neighbours (common practice)."""
 
 RARE: Final = (0.5, 0.1)
-"""A site filled less than this, holding less than this part of all atoms, is rare: carbon in austenite. It does
-not decide which atoms touch (common practice, no source)."""
+"""A site filled less than this, with less than this part of all atoms, is rare, like carbon in
+austenite: it does not decide which atoms touch (common practice, no source)."""
 
 EQUAL_SPHERES: Final[dict[LatticeType, tuple[int, float]]] = {
     "P": (6, pi / 6.0),
