@@ -100,9 +100,9 @@ def _line_said(line: LedgerLine, row: dict[str, Any], unit: str) -> str:
         if claim["unexplained"]:
             text += f"; unexplained, probability {claim['p']}"
         else:
-            text += (
-                f"; {claim['by']} {claim['hkl']}, deviation {claim['deviation']}, probability {claim['p']}"
-            )
+            degrees = "" if claim["deviation"].endswith("%") else "°"
+            text += f"; {claim['by']} {claim['hkl']}, deviation {claim['deviation']}{degrees}"
+            text += f", probability {claim['p']}"
     return text + "."
 
 
