@@ -134,36 +134,17 @@ class Candidates:
         self._of_entry: dict[int, int] = {}
         self._of_place: dict[tuple[int, int], list[int]] = {}
 
-    def add_entries(self, indices: Iterable[int], doubles: dict[int, int] | None = None) -> list[int]:
-        """Return pool numbers of listed entries, making their lines if they are new.
-
-        `doubles` gives, for entries without a structure, an unlisted phase that was fitted at their place: the
-        entry takes over its line pattern, else it could lose to a double of itself that knows its lines better.
-        """
+    def add_entries(self, indices: Iterable[int]) -> list[int]:
+        """Return pool numbers of listed entries, making their lines if they are new."""
         wanted = list(indices)
         new = [index for index in dict.fromkeys(wanted) if index not in self._of_entry]
         if new:
             e = self.entries
             rows = np.array(new)
-            own = [self._pattern_of_entry(index, (doubles or {}).get(index)) for index in new]
+            own = [self._pattern_of_entry(index) for index in new]
             self._tables.append(make_lines(self.axis, e.ln_a[rows], [(one.n, one.strength) for one in own]))
             for index, pattern in zip(new, own, strict=True):
-                self._of_entry[index] = len(self._columns)
-                self._columns.append(
-                    (
-                        float(e.ln_a[index]),
-                        float(e.drift_scale[index]),
-                        float(e.largest_drift[index]),
-                        float(e.ln_a_low[index]),
-                        float(e.ln_a_high[index]),
-                        float(e.ln_odds[index]) + pattern.ln_weight,
-                        pattern.scatter,
-                        False,
-                    )
-                )
-                self.entry_of.append(index)
-                self.lattice_of.append(int(e.lattice[index]))
-                self.pattern_of.append(-1)
+                self._append_entry(index, pattern)
             self._stacked = None
         return [self._of_entry[index] for index in wanted]
 
@@ -202,16 +183,41 @@ class Candidates:
             self._stacked = None
         return self._of_place[place]
 
-    def is_new(self, index: int) -> bool:
-        """Return whether an entry is not in the pool yet."""
-        return index not in self._of_entry
+    def number_of(self, index: int) -> int | None:
+        """Return the pool number of an entry, or None if it is not in the pool."""
+        return self._of_entry.get(index)
 
-    def _pattern_of_entry(self, index: int, double: int | None) -> Pattern:
-        entries = self.entries
-        if not entries.has_structure(index) and double is not None:
-            return self.unlisted_pattern[double]
-        scatter = 1.0 if entries.has_structure(index) else PATTERN_SCATTER
-        return Pattern(*entries.pattern(index), 0.0, scatter)
+    def inform_entry(self, index: int, double: int) -> int:
+        """Put an entry without a structure in the pool anew, with the line pattern of an unlisted phase."""
+        pattern = self.unlisted_pattern[double]
+        ln_a = self.entries.ln_a[[index]]
+        self._tables.append(make_lines(self.axis, ln_a, [(pattern.n, pattern.strength)]))
+        self._append_entry(index, pattern)
+        self._stacked = None
+        return self._of_entry[index]
+
+    def _append_entry(self, index: int, pattern: Pattern) -> None:
+        e = self.entries
+        self._of_entry[index] = len(self._columns)
+        self._columns.append(
+            (
+                float(e.ln_a[index]),
+                float(e.drift_scale[index]),
+                float(e.largest_drift[index]),
+                float(e.ln_a_low[index]),
+                float(e.ln_a_high[index]),
+                float(e.ln_odds[index]) + pattern.ln_weight,
+                pattern.scatter,
+                False,
+            )
+        )
+        self.entry_of.append(index)
+        self.lattice_of.append(int(e.lattice[index]))
+        self.pattern_of.append(-1)
+
+    def _pattern_of_entry(self, index: int) -> Pattern:
+        scatter = 1.0 if self.entries.has_structure(index) else PATTERN_SCATTER
+        return Pattern(*self.entries.pattern(index), 0.0, scatter)
 
     def add_zone(self, zone: int, ln_a: float) -> int:
         """Return the pool number of a zone of a non-cubic lattice at a place."""
@@ -313,7 +319,6 @@ class Search:
         self.candidates = Candidates(axis, entries, expected_unlisted)
         self.n_places = places_of_each_lattice
         self.n_zones = zones_of_each_kind
-        self.first_unlisted: list[Fitted] = []
         self.most_phases = most_phases
         self.always = tuple(self.candidates.add_entries(always))
         self.empty = empty_log_likelihood(axis)
@@ -405,13 +410,11 @@ class Search:
                             (*known, number), cell.phi, (*known_ln_a, ln_a), float(np.log(cell.sigma))
                         )
                         unlisted.append((score, start))
-        if parent is None and not self.always:
-            self.first_unlisted = self._evaluate([start for _, start in unlisted], MARGIN_SINGLE)
         taken = {self.candidates.entry_of[member] for member in known}
         best = scores.max(axis=0)
         order = [int(i) for i in np.argsort(-best, kind="stable") if int(i) not in taken][:n_listed]
         order = [index for index in order if np.isfinite(best[index])]
-        numbers = self.candidates.add_entries(order, self._doubles_of(order))
+        numbers = self.candidates.add_entries(order)
         for index, number in zip(order, numbers, strict=True):
             ranked = np.argsort(-scores[:, index], kind="stable")
             used: list[Cell] = []
@@ -433,23 +436,6 @@ class Search:
         floor = top - (FAR_BELOW_FIRST if parent is None else FAR_BELOW)
         self._proposals[key] = [item for item in result if item[0] > floor]
         return self._proposals[key]
-
-    def _doubles_of(self, indices: list[int]) -> dict[int, int]:
-        """Return, for new entries without a structure, the best unlisted phase that was fitted at their place."""
-        entries, candidates = self.entries, self.candidates
-        bare = [i for i in indices if candidates.is_new(i) and not entries.has_structure(i)]
-        if not bare:
-            return {}
-        best: dict[int, tuple[float, int]] = {}
-        for fit in self.found.values():
-            for member, ln_a in zip(fit.members, fit.ln_a, strict=True):
-                if candidates.entry_of[member] >= 0:
-                    continue
-                for index in bare:
-                    near = abs(float(ln_a) - float(entries.ln_a[index])) < float(entries.largest_drift[index])
-                    if near and candidates.lattice_of[member] == int(entries.lattice[index]):
-                        best[index] = max(best.get(index, (-np.inf, -1)), (fit.log_evidence, member))
-        return {index: member for index, (_, member) in best.items()}
 
     def _propose_by_strongest(
         self,
@@ -539,12 +525,19 @@ class Search:
 
     # -- evaluation ------------------------------------------------------------------------------
 
-    def _evaluate(self, starts: Iterable[Start], margin: float) -> list[Fitted]:
-        """Evaluate new sets (several starts of one set compete) and remember them."""
+    def _evaluate(
+        self, starts: Iterable[Start], margin: float, *, beside: Iterable[Start] = ()
+    ) -> list[Fitted]:
+        """Evaluate new sets (several starts of one set compete) and remember them.
+
+        `beside` are known sets that the margin is also judged by.
+        """
         by_size: dict[int, list[Start]] = {}
         for start in starts:
             if tuple(sorted(start.members)) not in self.found:
                 by_size.setdefault(len(start.members), []).append(start)
+        for start in beside:
+            by_size.setdefault(len(start.members), []).append(start)
         fresh: dict[Key, Fitted] = {}
         for group in by_size.values():
             batch, kept = evaluate(
@@ -630,7 +623,7 @@ class Search:
     def _first_level(self) -> list[Fitted]:
         starts = [start for _, start in self._propose((), N_SINGLE)]
         if not self.always:
-            return [*self.first_unlisted, *self._evaluate(starts, MARGIN_SINGLE)]
+            return self._with_informed_entries(self._evaluate(starts, MARGIN_SINGLE))
         (standard,) = self.always
         own = [start for start in starts if start.members == (standard,)]
         ln_a = float(self.candidates.pool.ln_a[standard])
@@ -639,6 +632,53 @@ class Search:
             for cell in (curve.cell for curve in self.first_curves)
         ]
         return self._evaluate(own, MARGIN_SINGLE)
+
+    def _with_informed_entries(self, level: list[Fitted]) -> list[Fitted]:
+        """Give entries without a structure the line pattern of the unlisted phase fitted at their place.
+
+        Else such an entry could lose to a double of itself that knows its lines better. The entry is evaluated
+        anew, beside the double, and takes the place of its former reading.
+        """
+        entries, candidates = self.entries, self.candidates
+        gone: dict[int, Start] = {}
+        doubles = []
+        for index in sorted(self._bare_in_pool()):
+            old = candidates.number_of(index)
+            near = [
+                fit
+                for fit in level
+                if fit.members[0] in candidates.unlisted_pattern
+                and candidates.lattice_of[fit.members[0]] == int(entries.lattice[index])
+                and abs(float(fit.ln_a[0]) - float(entries.ln_a[index])) < float(entries.largest_drift[index])
+            ]
+            if not near:
+                continue
+            double = max(near, key=lambda fit: (fit.log_evidence, fit.key))
+            number = candidates.inform_entry(index, double.members[0])
+            place = (double.shift_terms, (float(double.ln_a[0]),), float(double.ln_sigma))
+            if old is not None:
+                gone[old] = Start((number,), *place)
+            doubles.append(Start(double.members, *place))
+        if not gone:
+            return level
+        for number in gone:
+            self.found.pop((number,), None)
+        proposed = self._proposals[()]
+        self._proposals[()] = [
+            (score, gone.get(start.members[0], start) if len(start.members) == 1 else start)
+            for score, start in proposed
+        ]
+        informed = self._evaluate(gone.values(), MARGIN_SINGLE, beside=doubles)
+        kept = [fit for fit in level if fit.members[0] not in gone]
+        known = {fit.key for fit in kept}
+        return [*kept, *(fit for fit in informed if fit.key not in known)]
+
+    def _bare_in_pool(self) -> set[int]:
+        return {
+            index
+            for index in self.candidates.entry_of
+            if index >= 0 and not self.entries.has_structure(index)
+        }
 
     def _exchange(self, best: float) -> None:
         """Try every other candidate in each place of the best sets: look-alikes must all be weighed."""
