@@ -18,6 +18,7 @@ from phasedb.crystal.radiation import (
     d_from_q,
     d_from_ring_radius,
     d_from_two_theta,
+    radiation_from_name,
     two_theta_from_d,
 )
 from phasedb.identify.settings import ShiftPrior
@@ -249,6 +250,7 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         relative = 1.0 / (2.0 * np.degrees(np.tan(np.radians(peaks.two_theta_deg) / 2.0)))
     extra = np.hypot(esd, WIDTH_TO_NOISE * fwhm) * relative
     is_camera = peaks.unit == "ring" or radiation is not None
+    likely = None if is_camera else _likely_radiation(peaks)
     return Axis(
         x=-np.log(peaks.d_angstrom),
         ln_intensity=ln_intensity,
@@ -270,9 +272,9 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         doublet_ratio=0.0,
         doublet_width=1.0,
         doublet_resolved=False,
-        ghosts=(),
+        ghosts=() if likely is None else _ghosts(likely),
         read_from_angles=not is_camera,
-        likely_wavelength=None if is_camera else _likely_wavelength(peaks),
+        likely_wavelength=None if likely is None else likely.wavelength_angstrom,
     )
 
 
@@ -283,12 +285,12 @@ def _scale_esd(peaks: PeakList, *, is_camera: bool) -> float:
     return SCALE_OF_CAMERA if is_camera else SCALE_OF_D_LIST
 
 
-def _likely_wavelength(peaks: PeakList) -> float:
-    """Return the wavelength (Å) that a list of d alone was most likely read with: copper's, if it reaches."""
+def _likely_radiation(peaks: PeakList) -> Radiation:
+    """Return the radiation that a list of d alone was most likely read with: copper, if it reaches."""
     for anode in ("Cu", "Mo"):
         if peaks.d_angstrom.min() > 0.51 * EMISSION_LINES[anode].alpha1:
-            return EMISSION_LINES[anode].alpha1
-    return EMISSION_LINES["Ag"].alpha1
+            return radiation_from_name(anode)
+    return radiation_from_name("Ag")
 
 
 def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:

@@ -34,7 +34,7 @@ HEIGHT_SPREAD: Final = (0.45, 1.2)  # ln: powder, textured (tuned)
 HEIGHT_MIX: Final = (0.72, 0.23, 0.05)  # powder, textured, anything: texture cannot veto a phase (tuned)
 SHIFT_TAIL: Final = 3.0  # degrees of freedom of the Student-t priors
 DRIFT_TAIL: Final = 3.0
-DRIFT_EDGE: Final = 0.2  # of the largest drift: how sharply an entry ends there
+DRIFT_EDGE: Final = 0.08  # of the largest drift: how sharply an entry ends there
 SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
 DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
@@ -44,6 +44,10 @@ SET_SHARES_AT: Final = (0, 1, 3, 5)
 FIND_NEIGHBOURS_AT: Final = (0, 2, 3, 5)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
+FEWEST_OWN_LINES: Final = 3.0  # that a phase should claim alone (tuned)
+COST_OF_LACKING: Final = 2.5  # nats for each line short of it, for a cell that may lie anywhere (tuned)
+COST_OF_LACKING_LISTED: Final = 1.0
+BARE_GHOST_HEIGHT: Final = 0.8
 GHOST_PRIOR_LINES: Final = 1.5  # weight of the usual frequency of ghosts, in lines
 GHOST_LIST_PRIOR: Final = -2.0  # ln chance that a list shows a kind of ghost throughout
 N_SHIFT: Final = 3  # shift terms: zero, displacement, doublet
@@ -174,6 +178,10 @@ class _Fit:
         self.ghost_height = np.zeros((self.n_sets, 4))
         for ghost in axis.ghosts:
             self.activity[:, ghost.kind] = ghost.frequency
+            if (
+                axis.ln_intensity is None
+            ):  # without heights, a list that shows ghosts shows the strong lines' ones
+                self.ghost_height[:, ghost.kind] = -BARE_GHOST_HEIGHT * np.log(ghost.height)
         self.x_line = np.empty((0, 0, 0))
 
     def subset(self, pool: Pool, rows: IntArray) -> _Fit:
@@ -302,7 +310,8 @@ class _Fit:
             a, b = GHOST_PRIOR_LINES * base, GHOST_PRIOR_LINES * (1.0 - base)
             value += np.minimum(a * np.log(active / base) + b * np.log((1 - active) / (1 - base)), 0.0)
             value += np.where(active > 0.4, GHOST_LIST_PRIOR, 0.0)
-            value -= 0.5 * (self.ghost_height[:, ghost.kind] / ghost.height_spread) ** 2
+            if self.axis.ln_intensity is not None:
+                value -= 0.5 * (self.ghost_height[:, ghost.kind] / ghost.height_spread) ** 2
         return value
 
     def in_range(self) -> BoolArray:
@@ -334,7 +343,7 @@ class _Fit:
         claim = odds * density
         others = self.rate[:, None, None] / axis.span + claim.sum(axis=(1, 3))[:, None, :]
         claim = self._one_to_one(claim, others)
-        cross = self._shared_lines(claim, odds, density)
+        cross = self._shared_lines(claim, odds, sigma, near_height)
         base = self.rate[:, None] / axis.span
         explained = claim.sum(axis=(1, 3)) + cross
         self.total = base + explained
@@ -377,26 +386,43 @@ class _Fit:
         # of exactly equal scores the first observed line has the claim
         return np.where(keep, claim, 0.0)
 
-    def _shared_lines(self, claim: FloatArray, odds: FloatArray, density: FloatArray) -> FloatArray:
+    def _shared_lines(
+        self, claim: FloatArray, odds: FloatArray, sigma: FloatArray, heights: FloatArray
+    ) -> FloatArray:
         """Return the further density where predicted lines of two members coincide.
 
-        One line with p = 1 - (1 - p1)(1 - p2) has r = r1 + r2 + r1 r2: this is the last term.
+        One line with p = 1 - (1 - p1)(1 - p2) has r = r1 + r2 + r1 r2: this is the last term, for a line at the
+        centre of the two, weighted by their heights, and as high as both together.
         """
         extra = np.zeros((self.n_sets, self.n))
         if self.m < 2:
             return extra
         best = claim.argmax(axis=3)[..., None]
-        strongest = np.take_along_axis(claim, best, axis=3)[..., 0]
-        r = np.take_along_axis(odds, best, axis=3)[..., 0]
-        dens = np.take_along_axis(density, best, axis=3)[..., 0]
-        x = np.take_along_axis(self.near_x, best, axis=3)[..., 0]
+
+        def of_best(column: FloatArray) -> FloatArray:
+            return np.take_along_axis(column, best, axis=3)[..., 0]
+
+        strongest, r, delta = of_best(claim), of_best(odds), of_best(self.delta)
+        height = of_best(heights) + self.ln_share[:, :, None]
+        scatter = of_best(np.where(self.near_plain, self.height_scale[:, :, None, None], 2.0))
+        width = sigma[:, 0, :, 0]
         for first in range(self.m):
             for second in range(first + 1, self.m):
-                close = np.abs(x[:, first] - x[:, second]) < self.axis.resolution
+                close = np.abs(delta[:, first] - delta[:, second]) < self.axis.resolution
                 close &= (strongest[:, first] > 0) & (strongest[:, second] > 0)
-                extra += np.where(
-                    close, r[:, first] * r[:, second] * np.sqrt(dens[:, first] * dens[:, second]), 0.0
-                )
+                if not close.any():
+                    continue
+                both = np.logaddexp(height[:, first], height[:, second])
+                share = np.exp(np.clip(height[:, first] - both, -60.0, 0.0))
+                middle = share * delta[:, first] + (1.0 - share) * delta[:, second]
+                density, _ = self._position_density(middle, width)
+                if self.use_heights and self.axis.ln_intensity is not None:
+                    scale = np.minimum(scatter[:, first], scatter[:, second])
+                    residual = (self.axis.ln_intensity - both) / scale
+                    density = (
+                        density * np.exp(log_height_density(residual)) / scale * max(0.3 - self.floor, 1.0)
+                    )
+                extra += np.where(close, r[:, first] * r[:, second] * density, 0.0)
         return extra
 
     # -- updates ---------------------------------------------------------------------------------
@@ -573,6 +599,12 @@ class _Fit:
         laplace = 0.5 * (N_SHIFT + 1 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
         evidence = log_likelihood + prior + laplace + share_term.sum(axis=1) + self.ln_odds
         evidence += self.ghost_prior()
+        # a phase that claims hardly a line of its own only mends the heights of others
+        each = np.where(self.near_plain, self.claims, 0.0).sum(axis=3)
+        others = np.clip(self.claims.sum(axis=(1, 3))[:, None, :] - self.claims.sum(axis=3), 0.0, 1.0)
+        own = (each * (1.0 - others)).sum(axis=2)
+        lacking = np.maximum(FEWEST_OWN_LINES - own, 0.0)
+        evidence -= (np.where(self.unlisted, COST_OF_LACKING, COST_OF_LACKING_LISTED) * lacking).sum(axis=1)
         plain = p * (self.kind == KIND_LINE)
         return Evaluated(
             log_evidence=evidence,
