@@ -150,7 +150,7 @@ def _say_adopted(found: Unknown, content: Draft, warnings: list[str], *, dry_run
             "density",
             "" if content.measured_density_g_cm3 is None else f"{content.measured_density_g_cm3:g} g/cm³",
         ),
-        ("drift class", f"{content.drift_class} {content.drift_reason}".strip()),
+        ("drift class", content.drift_class + (f" ({content.drift_reason})" if content.drift_reason else "")),
         ("source", "; ".join(f"{source.citation} ({source.kind})" for source in content.sources)),
         ("remarks", content.remarks),
     ]

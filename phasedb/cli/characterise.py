@@ -100,7 +100,7 @@ def _found_text(found: ScanResult) -> str:
     return (
         f"{count} line{'' if count == 1 else 's'} in {len(found.scan)} points, "
         f"{found.scan.two_theta_deg[0]:.2f} to {found.scan.two_theta_deg[-1]:.2f} deg; "
-        f"noise from {found.noise_origin}; at most {found.false_lines:g} expected from noise alone"
+        f"noise: {found.noise_origin}; at most {found.false_lines:g} expected from noise alone"
     )
 
 

@@ -71,7 +71,7 @@ def _header(result: ScanResult) -> list[str]:
     if scan.sha256:
         said.append(f"# the scan's SHA-256 is {scan.sha256}")
     said.append(
-        f"# noise from {result.noise_origin}; at most {result.false_lines:g} lines expected from noise alone"
+        f"# noise, {result.noise_origin}; at most {result.false_lines:g} lines expected from noise alone"
     )
     if result.doublet_ratio is not None:
         said.append(f"# K-alpha2 over K-alpha1 as fitted {result.doublet_ratio:.3f}")
