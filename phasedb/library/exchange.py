@@ -107,8 +107,9 @@ def plan(
         planner.place(candidate)
     planner.settle_replacements()
     found = planner.plan
-    warned = warnings_for_many(connection, [candidate.prepared for candidate, _ in found.new])
-    for (candidate, _), warnings in zip(found.new, warned, strict=True):
+    in_use = [candidate for candidate, entry in found.new if entry.standing != "withdrawn"]
+    warned = warnings_for_many(connection, [candidate.prepared for candidate in in_use])
+    for candidate, warnings in zip(in_use, warned, strict=True):
         found.warnings += [RowWarning(candidate.file, candidate.row, candidate.name, w) for w in warnings]
     return found
 
@@ -344,16 +345,18 @@ def write_plan(
     progress : callable, optional
         Called with the number of entries written since the last call.
     """
-    warned: dict[tuple[str, int], list[Warned]] = {}
+    warned: dict[tuple[str, int, str], list[Warned]] = {}
     for row in found.warnings:
-        warned.setdefault((row.file, row.row), []).append(row.warning)
+        warned.setdefault((row.file, row.row, row.name), []).append(row.warning)
     for start in range(0, len(found.new), _ROWS_AT_ONCE):
         chunk = [
             (c, entry if c.entry is not None else replace(entry, entered_at=writing.at))
             for c, entry in found.new[start : start + _ROWS_AT_ONCE]
         ]
         said = [
-            "; ".join(part for part in (remark(c), accepted_text(warned.get((c.file, c.row), ()))) if part)
+            "; ".join(
+                part for part in (remark(c), accepted_text(warned.get((c.file, c.row, c.name), ()))) if part
+            )
             for c, _ in chunk
         ]
         entering.write_new(writing, [entry for _, entry in chunk], action=action, remarks=said)

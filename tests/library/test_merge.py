@@ -63,6 +63,18 @@ def test_a_dry_run_lists_and_writes_nothing(starter: str, other: str) -> None:
     assert Path(starter).read_bytes() == before
 
 
+def test_each_entry_gets_its_own_warnings_in_the_history(starter: str, other: str) -> None:
+    with Library.open(other, by="Olga", write=True) as library:
+        library.add(Draft("near gold", "AuCu", "F", 4.0785), accept_warnings=True)
+    run("merge", other, store=starter)
+    rows = {
+        name: run("history", name, "--json", store=starter).json["rows"][0]
+        for name in ("near gold", "old carbide")
+    }
+    assert "accepted warning: 4.0785 Å is within" in rows["near gold"]["remark"]
+    assert "accepted" not in rows["old carbide"]["remark"]
+
+
 def test_the_same_starter_entries_are_the_same(starter: str, tmp_path: Path) -> None:
     second = tmp_path / "second.sqlite"
     run("init", store=second)

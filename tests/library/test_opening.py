@@ -154,6 +154,7 @@ def test_a_write_that_was_cut_off_is_undone_when_reading(starter, nitride):
         "from phasedb.library import Library\n"
         f"library = Library.open({starter!r}, by='x', write=True)\n"
         "with library.begin_write() as writing:\n"
+        "    writing.connection.exec_driver_sql('PRAGMA cache_spill=ON')\n"
         "    writing.connection.exec_driver_sql('PRAGMA cache_size=1')\n"  # spills changed pages to the file
         "    writing.connection.exec_driver_sql(\"UPDATE phase SET remarks = 'half done'\")\n"
         "    os.kill(os.getpid(), signal.SIGKILL)\n"
