@@ -58,6 +58,7 @@ def _content_options(command: _Command) -> _Command:
 @click.option("--lattice", metavar="P|I|F", help="Lattice type, if known: then the list is not indexed.")
 @click.option("--a", "a_text", metavar="A", help="Rough lattice constant, with --lattice.")
 @click.option("--left-over", is_flag=True, help="Use only the lines that no stored phase claims.")
+@click.option("--elements", metavar="Fe,Cr,..", help="What the specimen holds, for --left-over.")
 @peak_options
 @click.option("--accept-warning", is_flag=True, help="Write in spite of warnings; recorded.")
 @click.option("--dry-run", is_flag=True, help="Show what would be entered; write nothing.")
@@ -70,6 +71,7 @@ def adopt(
     lattice: str | None,
     a_text: str | None,
     left_over: bool,
+    elements: str | None,
     measured: PeakOptions,
     accept_warning: bool,
     dry_run: bool,
@@ -90,7 +92,7 @@ def adopt(
     cell = None if lattice is None or a_text is None else cell_from_values(lattice, a_text)
     library = open_library(ctx, write=not dry_run)
     prior = measured.shift_prior(ctx)
-    used = lines_left_over(library, peaks, prior) if left_over else peaks
+    used = lines_left_over(library, peaks, prior, elements) if left_over else peaks
     found = characterise_unknown(used, cell=cell, shift_prior=prior)
     draft = _draft_of(found, peaks, given)
     if dry_run:

@@ -193,6 +193,7 @@ def _starting_cell(
 @click.argument("peaks_file", metavar="PEAKS", type=click.Path())
 @peak_options
 @click.option("--left-over", is_flag=True, help="Index only the lines that no stored phase claims.")
+@click.option("--elements", metavar="Fe,Cr,..", help="What the specimen holds, for --left-over.")
 @click.option("--figure", metavar="FILE", help="Also draw the axis of a: .svg, .png or .pdf.")
 @json_option
 @click.pass_context
@@ -201,6 +202,7 @@ def index(
     peaks_file: str,
     measured: PeakOptions,
     left_over: bool,
+    elements: str | None,
     figure: str | None,
     as_json: bool,
 ) -> None:
@@ -217,7 +219,7 @@ def index(
         figure_format(Path(figure))
     peaks = measured.read(ctx, peaks_file)
     if left_over:
-        peaks = lines_left_over(open_library(ctx), peaks, measured.shift_prior(ctx))
+        peaks = lines_left_over(open_library(ctx), peaks, measured.shift_prior(ctx), elements)
     found = index_lines(peaks, shift_prior=measured.shift_prior(ctx))
     from phasedb.report.indexing import index_document, index_text
 
@@ -232,12 +234,26 @@ def index(
         print_text(index_text, found, peaks)
 
 
-def lines_left_over(library: Library, peaks: PeakList, prior: ShiftPrior | None) -> PeakList:
-    """Return the lines that no stored phase claims."""
+def lines_left_over(
+    library: Library, peaks: PeakList, prior: ShiftPrior | None, elements: str | None
+) -> PeakList:
+    """Return the lines that no stored phase claims, in a specimen of these elements (None: not known)."""
     from phasedb.characterise.indexing import left_over
-    from phasedb.cli.matching import TableOnce, run_match
-    from phasedb.identify.settings import MatchSettings, ShiftPrior
+    from phasedb.cli.matching import MatchOptions, TableOnce, run_match
 
+    asked = MatchOptions(
+        most_phases=4,
+        internal_standard=None,
+        foreign=None,
+        checked_only=False,
+        as_of=None,
+        elements=elements,
+        unseen=None,
+        excluding=None,
+        strict_chemistry=False,
+        any_temperature=False,
+        rank_by="probability",
+    )
     with library.reading():
-        found = run_match(peaks, TableOnce(library), MatchSettings(shift_prior=prior or ShiftPrior()))
+        found = run_match(peaks, TableOnce(library), asked.settings(library, prior))
     return left_over(peaks, found)
