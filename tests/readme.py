@@ -188,10 +188,7 @@ def documents(folder: Path) -> dict[str, tuple[str, dict[str, object]]]:
     lay_out(folder)
     _make_scan(folder / "made.xy")
     variables = {**environment(folder), "PHASEDB_STORE": "lab.sqlite"}
-    runs = [
-        ["--store", "other.sqlite", "init"],
-        *(line.split() for line in _SCHEMA_RUNS.strip().splitlines()),
-    ]
+    runs = [line.split() for line in _SCHEMA_RUNS.strip().splitlines()]
     found: dict[str, tuple[str, dict[str, object]]] = {}
     for words in runs:
         person = "B. Second" if words[0] in _SECOND_PERSON else "A. First"

@@ -1,4 +1,5 @@
-"""Indexing: lattice type and lattice constant from a list alone, with the alternatives that it cannot exclude.
+"""Indexing: lattice type and lattice constant from a list alone, with the alternatives that it cannot
+exclude.
 
 The same evidence as the matcher's, over every lattice type and the whole axis of a, with no library.
 A perfect cubic index does not prove cubic symmetry: a tetragonal and an orthorhombic cell give the same lines
@@ -232,7 +233,8 @@ def _alternatives(
         only = _lines_of_one(lattice, other, ratio, n_used)
         if not only or {float(value) for value in n_used} & set(only):
             continue  # a line that only this cell has was seen
-        # F(a) and P(a/2) differ by the odd lines of F, which isoelectronic ions extinguish however many there are
+        # F(a) and P(a/2) differ by the odd lines of F, which isoelectronic ions extinguish however many there
+        # are
         may_be_extinct = {lattice, other} == {"F", "P"}
         if _count_in_range(axis, a, only) > 1 and not may_be_extinct:
             continue

@@ -17,8 +17,8 @@ from phasedb.errors import InputError, UnknownNameError
 from phasedb.identify.assemble import Assembler
 from phasedb.identify.axis import make_axis
 from phasedb.identify.entries import Entries, prepare
-from phasedb.identify.gather import Gathered, PhaseSource, gather
 from phasedb.identify.foreign import keep_lines, set_aside
+from phasedb.identify.gather import Gathered, PhaseSource, gather
 from phasedb.identify.posterior import make_posterior
 from phasedb.identify.result import Match
 from phasedb.identify.search import Search
@@ -141,13 +141,15 @@ def _cautions(peaks: PeakList, entries: Entries, settings: MatchSettings, count:
         found.append("the library holds no phase: only unlisted phases could be considered")
     if len(peaks) < 4:
         found.append(
-            f"only {len(peaks)} line{'s' if len(peaks) != 1 else ''}: many cubic cells fit so few lines by luck; "
+            f"only {len(peaks)} line{'s' if len(peaks) != 1 else ''}: many cubic cells fit so few lines by "
+            f"luck; "
             "measure a wider range or with better accuracy"
         )
     if entries.left_out_for_temperature:
         number = len(entries.left_out_for_temperature)
         found.append(
-            f"{number} entr{'y' if number == 1 else 'ies'} recorded far from the measuring temperature left out "
+            f"{number} entr{'y' if number == 1 else 'ies'} recorded far from the measuring temperature left "
+            f"out "
             "(their expansion is not known); --any-temperature brings them in"
         )
     if peaks.intensity is None:

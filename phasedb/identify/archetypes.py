@@ -1,4 +1,5 @@
-"""Line patterns that a phase of unknown structure may have: typical ones of each lattice type, and a generic one.
+"""Line patterns that a phase of unknown structure may have: typical ones of each lattice type, and a generic
+one.
 
 The typical ones come from the structure types of the starter library (archetypes.json, made by
 ``python -m study.archetypes``).
@@ -25,7 +26,9 @@ GENERIC_WEIGHT: Final = 0.15  # of all patterns: structures that no archetype re
 
 @dataclass(frozen=True, slots=True)
 class Archetype:
-    """A line pattern with the range of a where such structures occur and its weight among those of its lattice."""
+    """A line pattern with the range of a where such structures occur and its weight among those of its
+    lattice.
+    """
 
     name: str
     n: NDArray[np.int64]
@@ -61,7 +64,9 @@ def generic(lattice: LatticeType) -> Archetype:
 
 
 def archetypes(lattice: LatticeType, a_angstrom: float) -> list[tuple[float, Archetype]]:
-    """Return (ln weight, pattern) of the patterns that fit a lattice type and a; weights sum to 1, generic last."""
+    """Return (ln weight, pattern) of the patterns that fit a lattice type and a; weights sum to 1, generic
+    last.
+    """
     fitting = [one for one in _typical()[lattice] if one.a_low <= a_angstrom <= one.a_high]
     total = sum(one.weight for one in fitting)
     if not fitting:

@@ -56,7 +56,9 @@ def _windowed(values: FloatArray, reach: int) -> FloatArray:
 
 
 def share_at_least(values: FloatArray, score: float) -> float:
-    """Return the share of `values` at or above `score`, extrapolated exponentially beyond the highest ones."""
+    """Return the share of `values` at or above `score`, extrapolated exponentially beyond the highest
+    ones.
+    """
     share = float(np.mean(values >= score))
     if share > 1.0 - TAIL_QUANTILES[1]:
         return share

@@ -25,8 +25,8 @@ MOST_LINES_VOTING: Final = 120  # the strongest ones of a longer list
 LEAST_VOTE: Final = 0.02
 STAMP_HALF_WIDTH: Final = 3.2  # standard deviations
 
-# Chance that the line of rank r of an unknown phase is seen: high for the first lines, lower as the cell grows
-# large (tuned, with the structure types of the starter library in view).
+# Chance that the line of rank r of an unknown phase is seen: high for the first lines, lower as the cell
+# grows large (tuned, with the structure types of the starter library in view).
 _RANK_P: Final = {
     "P": (0.62, 14.0),
     "I": (0.68, 10.0),

@@ -1,8 +1,8 @@
 """Which entries of a large library to consider: those near the places that the votes point to.
 
 A small library is read whole. A large one is asked, through its index on (lattice type, a), for the entries
-near every place of the ln a axis where an unlisted phase would explain lines; where a window holds more entries than
-are read, each one read stands for several.
+near every place of the ln a axis where an unlisted phase would explain lines; where a window holds more
+entries than are read, each one read stands for several.
 """
 
 from __future__ import annotations
@@ -126,7 +126,8 @@ def _crowd(found: PhaseTable, count: int) -> FloatArray:
         return np.ones(len(found))
     scale = np.array([DRIFT_SCALE[name] for name in DRIFT_CLASSES])[found.drift]
     reach = np.minimum(np.sqrt(3.0) * np.pi / 2.0 * scale, 2.0 * WINDOW)
-    return np.maximum(count / (2.0 * WINDOW) * reach / len(found), 1.0)
+    crowd: FloatArray = np.maximum(count / (2.0 * WINDOW) * reach / len(found), 1.0)
+    return crowd
 
 
 def _named(source: PhaseSource, settings: MatchSettings) -> PhaseTable:

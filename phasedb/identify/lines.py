@@ -1,6 +1,7 @@
 """The lines that candidate phases would show on a scoring axis, as padded columns.
 
-A candidate is a listed phase, or an unlisted one of some lattice type, place on the ln a axis and line pattern.
+A candidate is a listed phase, or an unlisted one of some lattice type, place on the ln a axis and line
+pattern.
 """
 
 from __future__ import annotations
@@ -18,7 +19,7 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 MOST_LINES_OF_A_PHASE: Final = 64
-WEAKEST_LINE: Final = 2e-3  # of the strongest in range: below any list's floor
+WEAKEST_LINE: Final = 4e-4  # of the strongest in range: below any measured list's floor
 GHOST_PARENT: Final = {KIND_ALPHA2: 0.04, KIND_BETA: 0.15, KIND_TUNGSTEN: 0.25}  # least height of a parent
 EDGE_REACH: Final = 0.03  # ln a: how far a candidate may move; lines that could enter the range are kept
 
@@ -76,7 +77,8 @@ def polarisation_factor(axis: Axis, x_true: FloatArray) -> FloatArray:
 
     References
     ----------
-    International Tables for Crystallography Vol. C (2006), section 6.2 (no monochromator, randomly oriented powder).
+    International Tables for Crystallography Vol. C (2006), section 6.2 (no monochromator, randomly oriented
+    powder).
     """
     if axis.is_angle:
         theta = np.radians(np.clip(x_true, 1.0, 178.0)) / 2.0
@@ -133,7 +135,8 @@ def make_lines(
     keep = min(MOST_LINES_OF_A_PHASE, longest)
     if longest > keep:
         chosen = np.sort(np.argpartition(-height, keep - 1, axis=1)[:, :keep], axis=1)
-        height, half, n = (np.take_along_axis(column, chosen, axis=1) for column in (height, half, n))
+        height, half = (np.take_along_axis(column, chosen, axis=1) for column in (height, half))
+        n = np.take_along_axis(n, chosen, axis=1)
     gone = height < WEAKEST_LINE
     height = np.where(gone, 0.0, height)
     half = np.where(gone, np.inf, half)

@@ -1,7 +1,7 @@
 """Screening by strongest lines: which entries' own strongest lines are in the list.
 
-The votes on the ln a axis know the lattice type only, and think little of a large cell most of whose lines are
-too weak to be seen. An entry with a known structure says which of its lines must be there.
+The votes on the ln a axis know the lattice type only, and think little of a large cell most of whose lines
+are too weak to be seen. An entry with a known structure says which of its lines must be there.
 """
 
 from __future__ import annotations
@@ -28,7 +28,8 @@ DRIFT_WIDTHS: Final = 1.0  # drift scales added to the width within which a line
 class Strongest:
     """The strongest lines in range of every entry with a structure, in one flat list.
 
-    `entry` (n_lines,) index of the entry; `half_ln_n` (n_lines,); `chance` (n_lines,) that such a line is seen.
+    `entry` (n_lines,) index of the entry; `half_ln_n` (n_lines,); `chance` (n_lines,) that such a line is
+    seen.
     """
 
     entry: NDArray[np.int64]
@@ -63,7 +64,9 @@ def strongest_lines(axis: Axis, entries: Entries) -> Strongest:
 def screen(
     axis: Axis, entries: Entries, lines: Strongest, cell: Cell, base: FloatArray, explained: FloatArray
 ) -> FloatArray:
-    """Return a score for each entry: what its strongest lines found in the list, and not found, are worth (nats)."""
+    """Return a score for each entry: what its strongest lines found in the list, and not found, are worth
+    (nats).
+    """
     if len(lines.entry) == 0 or len(axis.x) == 0:
         return np.full(len(entries), -np.inf)
     true = axis.positions(lines.half_ln_n, entries.ln_a[lines.entry])

@@ -65,7 +65,8 @@ def kind_of_source(citation: str, how: str = "") -> SourceKind:
     if _JOURNAL.search(text):
         return "paper"
     if re.search(
-        r"package|\bpredefined\b|dabax|\.ini\b|prototype|data set|data table|web tables|\bcod\b|\d\.\d+\.\d", text
+        r"package|\bpredefined\b|dabax|\.ini\b|prototype|data set|data table|web tables|\bcod\b|\d\.\d+\.\d",
+        text,
     ):
         return "data package"
     return "paper"

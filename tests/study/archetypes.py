@@ -1,8 +1,9 @@
-"""Make the line patterns of unlisted phases from the starter library: ``python -m study.archetypes`` (from tests/).
+"""Make the line patterns of unlisted phases from the starter library.
 
-Writes phasedb/identify/archetypes.json. For each structure type: the entry whose pattern is nearest to the mean of
-its type, and, where another differs much, the one farthest from it; weight by how many entries the type has. Types of
-a single entry are left out: their pattern would be that entry's own, and the study takes entries out of the library.
+Run from tests/ as ``python -m study.archetypes``; writes phasedb/identify/archetypes.json. For each structure
+type: the entry whose pattern is nearest to the mean of its type, and, where another differs much, the one
+farthest from it; weight by how many entries the type has. Types of a single entry are left out: their pattern
+would be that entry's own, and the study takes entries out of the library.
 """
 
 from __future__ import annotations
@@ -11,10 +12,10 @@ import json
 from pathlib import Path
 
 import numpy as np
-from study.library import starter_table
 
 from phasedb.crystal.lattice import LATTICE_TYPES
 from phasedb.crystal.phases import PhaseTable
+from study.library import starter_table
 
 N_TOP = 360
 WEAKEST = 2e-4
@@ -22,7 +23,9 @@ TARGET = Path(__file__).resolve().parents[2] / "phasedb" / "identify" / "archety
 
 
 def pattern(table: PhaseTable, row: int) -> np.ndarray:
-    """Return strength by N (index), with the fall of Lorentz-polarisation put on and the strongest line at 1."""
+    """Return strength by N (index), with the fall of Lorentz-polarisation put on and the strongest line at
+    1.
+    """
     dense = np.zeros(N_TOP + 1)
     first, last = table.line_start[row], table.line_start[row + 1]
     n, strength = table.line_n[first:last], table.line_strength[first:last]
