@@ -46,6 +46,9 @@ KEEP_FROM: Final = 3.5
 """Area over its uncertainty below which a fitted line is dropped."""
 SHAPE_ERROR: Final = 0.08
 """Share of the fitted height that the line shape may be wrong by, when the residual is searched again."""
+TAIL_ERROR: Final = 0.004
+TAIL_ERROR_WIDTHS: Final = 5.0
+"""Share of its height that a line may leave within so many widths (a filter's edge, axial divergence)."""
 ODD_WIDTH: Final = 2.5
 """A weak line this many times as wide as its neighbours is a bend of the background."""
 
@@ -171,7 +174,7 @@ class _Fitting:
         answers = answers_over(
             self.scan,
             self.scan.counts - self.background - model,
-            np.hypot(self.noise.sigma, SHAPE_ERROR * model),
+            np.hypot(self.noise.sigma, SHAPE_ERROR * model + self.tail_error()),
             widest_deg=float(widths.max()),
             narrowest_deg=0.5 * RESOLVING_SCALE * float(widths.min()),
         )
@@ -184,6 +187,18 @@ class _Fitting:
         ]
         if new:
             self.lines = self.lines.joined(self.started(new, model))
+
+    def tail_error(self) -> FloatArray:
+        """Return how wrong the tails of strong lines may be, at every point (counts)."""
+        error = np.zeros_like(self.x)
+        lines = self.lines
+        height = lines.area * pseudo_voigt_height(lines.fwhm, lines.mixing)
+        reach = TAIL_ERROR_WIDTHS * lines.fwhm
+        first = np.searchsorted(self.x, lines.centre - reach)
+        last = np.searchsorted(self.x, lines.alpha2(self.doublet) + reach)
+        for low, high, value in zip(first, last, TAIL_ERROR * height, strict=True):
+            error[low:high] = np.maximum(error[low:high], value)
+        return error
 
     def is_misfit_of_alpha2(self, candidate: Candidate, left: FloatArray) -> bool:
         """Return whether what is left there is a small part of a fitted line's K-alpha2."""
