@@ -3,19 +3,26 @@
 from __future__ import annotations
 
 import os
+import random
 import sqlite3
+import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Any, Final
 
 from phasedb.errors import StoreError
 
 if TYPE_CHECKING:
     from sqlalchemy.engine import Connection, Engine
 
-BUSY_SECONDS: Final = 10.0
+BUSY_SECONDS: Final = 15.0
 """How long a command waits for another one's write before it gives up."""
+
+_ATTEMPT_MILLISECONDS: Final = 10
+_PAUSE_SECONDS: Final = (0.001, 0.015)
+"""A write asks for the lock often, at random moments: SQLite's own pauses grow to a tenth of a second, and
+with eight writers somebody then never gets a turn."""
 
 SQLITE_MAGIC: Final = b"SQLite format 3\x00"
 
@@ -127,10 +134,30 @@ def sqlite_engine(connect: Callable[[], sqlite3.Connection]) -> Engine:
 
     @sa.event.listens_for(engine, "begin")
     def _begin(connection: Connection) -> None:
-        writing = connection.get_execution_options().get("phasedb_write", False)
-        connection.exec_driver_sql("BEGIN IMMEDIATE" if writing else "BEGIN")
+        if connection.get_execution_options().get("phasedb_write", False):
+            driver: Any = connection.connection.driver_connection
+            _begin_immediate(driver)
+        else:
+            connection.exec_driver_sql("BEGIN")
 
     return engine
+
+
+def _begin_immediate(driver: sqlite3.Connection) -> None:
+    """Begin a write, waiting `BUSY_SECONDS` for those of others."""
+    deadline = time.monotonic() + BUSY_SECONDS
+    driver.execute(f"PRAGMA busy_timeout={_ATTEMPT_MILLISECONDS}")
+    try:
+        while True:
+            try:
+                driver.execute("BEGIN IMMEDIATE")
+                return
+            except sqlite3.OperationalError as error:
+                if "locked" not in str(error) or time.monotonic() > deadline:
+                    raise
+            time.sleep(random.uniform(*_PAUSE_SECONDS))  # noqa: S311 (no secret)
+    finally:
+        driver.execute(f"PRAGMA busy_timeout={round(1000 * BUSY_SECONDS)}")
 
 
 def open_engine(place: str, *, write: bool) -> Engine:
