@@ -21,8 +21,8 @@ from phasedb.errors import InputError
 FloatArray = NDArray[np.float64]
 Lines = tuple[NDArray[np.int32], NDArray[np.float64]]
 
-D_MIN_ANGSTROM: Final = 0.45
-"""Shortest d that lines are computed for: Mo K-alpha1 at 2theta = 104 degrees."""
+D_MIN_ANGSTROM: Final = 0.36
+"""Shortest d that lines are computed for: Mo K-alpha1 at 2theta = 160 degrees."""
 N_MOST: Final = 2500
 """Highest N computed unless asked: a = 22.5 Å at the shortest d."""
 S_MAX_PER_ANGSTROM: Final = 2.0

@@ -52,7 +52,7 @@ def ideal_lines(
     """Return the lines of a phase in order of 2theta.
 
     With a structure, systematic absences are left out; without one, all lines that the lattice type allows
-    are given and intensities are None. Lines with d below 0.45 Å or N above 2500 are left out.
+    are given and intensities are None. Lines with d below 0.36 Å or N above 2500 are left out.
     """
     a = phase.a_angstrom
     d_min = radiation.wavelength_angstrom / (2.0 * np.sin(np.radians(min(two_theta_max_deg, 180.0)) / 2.0))

@@ -29,7 +29,7 @@ __all__ = ["Match", "MatchSettings", "PhaseSource", "ShiftPrior", "match"]
 
 FloatArray = NDArray[np.float64]
 
-TEMPERATURE: Final = 1.5
+TEMPERATURE: Final = 1.4
 STANDARD_DRIFT: Final = 2e-5  # ln a: certificates' relative expanded uncertainties are about 1.5e-5 to 2e-5
 
 

@@ -40,6 +40,7 @@ FloatArray = NDArray[np.float64]
 REPORTED: Final = 0.01  # phases at least this probable are in the result (DESIGN section 8)
 FEWEST_REPORTED: Final = 5
 CLAIMED: Final = 0.5
+RIVAL: Final = 0.05  # of an entry's probability: entries above it were not told from it by their a
 LEDGER_SETS: Final = 24
 ODDS_LIMIT: Final = 99.0
 MOST_LOOK_ALIKES_NAMED: Final = 20
@@ -183,7 +184,7 @@ class Assembler:
         row = int(entries.rows[index])
         place = fit.members.index(member)
         reading = self._reading(fit, place)
-        alike = find_look_alikes(self.axis, entries, index, reading)
+        alike = find_look_alikes(self.axis, entries, index, reading, self._rivals(probability, numbers))
         group = {member, *(numbers[other] for other in alike if other in numbers)}
         # entries that explain the lines about as well come first among the look-alikes
         alike.sort(
@@ -227,6 +228,11 @@ class Assembler:
             merit_f=f,
             merit_m=m,
         )
+
+    def _rivals(self, probability: float, numbers: dict[int, int]) -> set[int]:
+        """Return entries (by index) that explain the list nearly as well as one of this probability."""
+        least = RIVAL * probability
+        return {index for index, member in numbers.items() if self._chance_of(member) >= least}
 
     def _chance_of(self, member: int | None) -> float:
         return 0.0 if member is None else self.posterior.chance(lambda key: member in key)
@@ -394,8 +400,10 @@ class Assembler:
         for observed in range(len(self.axis.x)):
             claims, unexplained = self._claims_on(observed, weights, covered, empty)
             lines.append((int(kept[observed]), claims, unexplained, float(corrected[observed])))
-        for number in self.foreign.taken:
-            lines.append((int(number), (self.foreign.claim(int(number)),), 0.0, float("nan")))
+        lines += [
+            (number, (self.foreign.claim(number),), 0.0, float("nan"))
+            for number in map(int, self.foreign.taken)
+        ]
         lines.sort(key=lambda entry: entry[0])
         return tuple(self._ledger_line(*entry) for entry in lines)
 

@@ -30,8 +30,8 @@ DEFAULT_RADIUS_MM = 200.0  # common practice, no source: DESIGN takes 200 mm whe
 ELECTRON_BELOW_ANGSTROM = 0.2  # shorter wavelengths than any laboratory X-ray tube's K lines
 
 # Ghost lines: kind, how often a list shows them at all, height as a share of the parent's line.
-# K-alpha2 : K-alpha1 is 1 : 2 (International Tables C, 2.3.5.2); a filter or mirror leaves K-beta and tungsten
-# lines at the per-cent level (common practice, no source).
+# K-alpha2 : K-alpha1 is 1 : 2 (International Tables C, 2.3.5.2); a filter or mirror leaves K-beta and
+# tungsten lines at the per-cent level (common practice, no source).
 KIND_LINE, KIND_ALPHA2, KIND_BETA, KIND_TUNGSTEN = 0, 1, 2, 3
 
 
@@ -39,7 +39,8 @@ KIND_LINE, KIND_ALPHA2, KIND_BETA, KIND_TUNGSTEN = 0, 1, 2, 3
 class Ghost:
     """An optional further line of every strong line.
 
-    How often a list shows such lines at all, and their height relative to the parent's line (and its spread in ln).
+    How often a list shows such lines at all, and their height relative to the parent's line (and its spread
+    in ln).
     """
 
     kind: int
@@ -61,8 +62,8 @@ class Axis:
     extra_noise : (n,)
         Part of the noise that the list itself declares (esd and width), in units of x.
     noise_profile : (n,)
-        The list's noise at each line relative to its scale. 1 for angles and rings. A list of d alone was read
-        from angles nearly always, so that its relative noise grows as cot(theta), about as d.
+        The list's noise at each line relative to its scale. 1 for angles and rings. A list of d alone was
+        read from angles nearly always, so that its relative noise grows as cot(theta), about as d.
     low, high : float
         Measured range on x.
     wavelength : float or None
@@ -79,6 +80,10 @@ class Axis:
         without a doublet. The width (degrees) at which the two lines part.
     doublet_resolved : bool
         True where the wavelength is the mean, so that it is the resolved lines that are offset.
+    most_certain : float
+        The chance above which no line is expected (DESIGN section 6); less for rings, which merge and fade.
+    height_factor : float
+        How much wider heights scatter than a powder's X-ray lines do: electrons say little by intensity.
     blocked : tuple of (low, high)
         Stretches hidden by foreign lines: nothing is expected there.
     """
@@ -100,6 +105,8 @@ class Axis:
     doublet_width: float
     doublet_resolved: bool
     ghosts: tuple[Ghost, ...]
+    most_certain: float = 0.98
+    height_factor: float = 1.0
     read_from_angles: bool = False
     likely_wavelength: float | None = None
     blocked: tuple[tuple[float, float], ...] = ()
@@ -134,6 +141,15 @@ class Axis:
         if self.wavelength is None:
             return np.exp(-x_true) / TYPICAL_D_ANGSTROM if self.read_from_angles else np.zeros_like(x_true)
         return np.asarray(-(2.0 / self.radius_mm) * np.degrees(np.cos(np.radians(x_true) / 2.0)))
+
+    @property
+    def tilt(self) -> FloatArray:
+        """Return 1/d² of the observed lines, its mean taken off, on a scale of 1 for the list's whole
+        range.
+        """
+        q = np.exp(-2.0 * self.ln_d(self.x))
+        width = float(q.max() - q.min()) if len(q) else 0.0
+        return np.zeros_like(q) if width == 0.0 else np.asarray((q - q.mean()) / width)
 
     def bases(self, x_true: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Return dx/d(shift term) at true positions for the three shift terms."""
@@ -170,7 +186,7 @@ def _ghosts(radiation: Radiation | None) -> tuple[Ghost, ...]:
     lines = EMISSION_LINES[radiation.anode]
     base = radiation.wavelength_angstrom
     found = [
-        Ghost(KIND_BETA, lines.beta / base, 0.08, 0.03, 1.2),
+        Ghost(KIND_BETA, lines.beta / base, 0.12, 0.03, 1.2),
         Ghost(KIND_TUNGSTEN, W_L_ALPHA1_ANGSTROM / base, 0.04, 0.02, 1.0),
     ]
     if radiation.convention in ("doublet", "literal") and abs(base / lines.alpha1 - 1.0) < 2e-4:
@@ -200,7 +216,9 @@ def _doublet(radiation: Radiation) -> _Doublet:
 
 
 def is_angle_scored(peaks: PeakList) -> bool:
-    """Return whether a list is scored on 2theta (X-rays) rather than on ln d (electrons, or no wavelength)."""
+    """Return whether a list is scored on 2theta (X-rays) rather than on ln d (electrons, or no
+    wavelength).
+    """
     radiation = peaks.radiation
     return (
         radiation is not None
@@ -213,10 +231,7 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
     """Return the scoring axis of a peak list."""
     radiation = peaks.radiation
     angle = is_angle_scored(peaks)
-    if peaks.intensity is None:
-        ln_intensity = None
-    else:
-        ln_intensity = np.log(peaks.intensity / peaks.intensity.max())
+    ln_intensity = None if peaks.intensity is None else np.log(peaks.intensity / peaks.intensity.max())
     radius = peaks.goniometer_radius_mm or DEFAULT_RADIUS_MM
     fwhm = np.nan_to_num(peaks.fwhm) if peaks.fwhm is not None else np.zeros(len(peaks))
     esd = np.nan_to_num(peaks.esd) if peaks.esd is not None else np.zeros(len(peaks))
@@ -273,6 +288,8 @@ def make_axis(peaks: PeakList, prior: ShiftPrior) -> Axis:
         doublet_width=1.0,
         doublet_resolved=False,
         ghosts=() if likely is None else _ghosts(likely),
+        most_certain=RING_CERTAINTY if is_camera else 0.98,
+        height_factor=RING_HEIGHT_FACTOR if is_camera else 1.0,
         read_from_angles=not is_camera,
         likely_wavelength=None if likely is None else likely.wavelength_angstrom,
     )
@@ -327,15 +344,18 @@ def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:
     return low, float(values.max())
 
 
-# Scales of the model, from METHODS and tuned on the tuning seeds of tests/study (never on the reporting seeds).
+# Scales of the model, from METHODS and tuned on the tuning seeds of tests/study (never on the reporting
+# seeds).
 NOISE_CENTER_DEG = 0.02
 NOISE_SPREAD = 0.9
 NOISE_CENTER_RELATIVE = 6e-4
 NOISE_CENTER_RELATIVE_CAMERA = 3e-3
 SCALE_OF_CAMERA = 5e-3
-SCALE_OF_D_LIST = 4e-4
+SCALE_OF_D_LIST = 6e-4
 ZERO_OF_D_LIST = 9e-4  # of ln d at TYPICAL_D_ANGSTROM: a zero error of 0.05 degrees with copper radiation
 TYPICAL_D_ANGSTROM = 1.5
 WIDTH_TO_NOISE = 0.06
 USUAL_WIDTH_DEG = 0.15
+RING_CERTAINTY = 0.85
+RING_HEIGHT_FACTOR = 1.8
 NEVER = 1e-9  # the scale of a term that does not exist

@@ -1,4 +1,6 @@
-"""The library's phases as the search needs them: a at the measuring temperature, drift, prior odds, patterns."""
+"""The library's phases as the search needs them: a at the measuring temperature, drift, prior odds,
+patterns.
+"""
 
 from __future__ import annotations
 
@@ -21,8 +23,8 @@ EXPECTED_LISTED: Final = 1.5  # phases of the library expected in a sample (DESI
 MOST_LIKELY_PRIOR: Final = 0.35  # odds of one entry before the lines are seen, however sharp the chemistry
 # Student-t scales of ln a by drift class: what a real sample's a differs from the stored one by (METHODS 6).
 # ... and how far it may at most, beyond which the entry is not what the sample holds.
-LARGEST_DRIFT: Final = {"line compound": 0.002, "alloy": 0.009, "solid solution": 0.009}
-DRIFT_SCALE: Final = {"line compound": 3e-4, "alloy": 2.0e-3, "solid solution": 2.5e-3}
+LARGEST_DRIFT: Final = {"line compound": 0.004, "alloy": 0.009, "solid solution": 0.009}
+DRIFT_SCALE: Final = {"line compound": 4e-4, "alloy": 2.0e-3, "solid solution": 2.5e-3}
 TYPICAL_EXPANSION: Final = (
     1.5e-5  # 1/K, the spread of unknown expansion coefficients (common practice, no source)
 )
@@ -96,10 +98,11 @@ def prepare(
     low = np.where(np.isnan(table.a_low_angstrom), ln_a, np.log(table.a_low_angstrom) + ln_shift)
     high = np.where(np.isnan(table.a_high_angstrom), ln_a, np.log(table.a_high_angstrom) + ln_shift)
     ranged = high > low
-    scale = np.where(ranged, np.minimum(scale, 1e-3), scale)
+    scale = np.where(ranged, np.minimum(scale, 2e-3), scale)
     largest = np.array([LARGEST_DRIFT[name] for name in DRIFT_CLASSES])[table.drift]
-    largest = np.where(ranged, 0.002, largest) + 3.0 * np.hypot(relative_esd, spread)
-    # what is compatible with the chemistry shares the expectation; the rest keeps its share of the whole library
+    largest = np.where(ranged, 0.008, largest) + 3.0 * np.hypot(relative_esd, spread)
+    # what is compatible with the chemistry shares the expectation; the rest keeps its share of the whole
+    # library
     each = np.ones(len(table)) if crowd is None else crowd
     whole = float(max(phase_count or len(table), 1))
     suits = float((each * (weight >= 1.0)).sum() / max(float(each.sum()), 1e-9))

@@ -1,8 +1,9 @@
-"""Evidence of many sets of phases at once: the likelihood of DESIGN section 6, integrated by Laplace's method.
+"""Evidence of many sets of phases at once: the likelihood of DESIGN section 6, integrated by Laplace's
+method.
 
 For each set the two shift terms, every member's ln a, its share and the list's noise scale are fitted
-together (responsibility-weighted Gauss-Newton, which is the EM algorithm for this mixture), then integrated out:
-Gaussian widths from the information matrix for the continuous ones, a sum over values for share and
+together (responsibility-weighted Gauss-Newton, which is the EM algorithm for this mixture), then integrated
+out: Gaussian widths from the information matrix for the continuous ones, a sum over values for share and
 background. All arrays carry the set first: (n_sets, n_members, n_observed, 4), 4 being the predicted
 lines next to each observed one.
 """
@@ -25,31 +26,32 @@ BoolArray = NDArray[np.bool_]
 # Constants of the model. Those marked (tuned) were set on the tuning seeds of tests/study.
 BACKGROUND: Final = np.array([0.2, 0.7, 2.0, 5.0, 12.0, 30.0, 80.0, 250.0, 1000.0])
 BACKGROUND_LN_PRIOR: Final = np.log(np.array([0.25, 0.25, 0.2, 0.13, 0.08, 0.05, 0.02, 0.01, 0.01]))
-MOST_CERTAIN: Final = 0.98  # no predicted line is more certain than this (DESIGN section 6)
 DETECTION_SLOPE: Final = 2.0  # of the logistic in ln(height / floor) (tuned)
 FLOOR_AT_MOST: Final = 0.10  # of the strongest line, when the list is short
 TAIL_SHARE: Final = 0.08  # of lines whose position is off by more than the noise says (tuned)
 TAIL_WIDTH: Final = 3.5
-HEIGHT_SPREAD: Final = (0.45, 1.2)  # ln: powder, textured (tuned)
+HEIGHT_SPREAD: Final = (0.38, 1.1)  # ln: powder, textured (tuned)
 HEIGHT_MIX: Final = (0.72, 0.23, 0.05)  # powder, textured, anything: texture cannot veto a phase (tuned)
 SHIFT_TAIL: Final = 3.0  # degrees of freedom of the Student-t priors
 DRIFT_TAIL: Final = 3.0
 DRIFT_EDGE: Final = 0.08  # of the largest drift: how sharply an entry ends there
 SHARE_STEPS: Final = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
 SHARE_RANGE: Final = 5.3  # ln 200: shares from 0.5 % to all
-DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 120.0, 250.0]))
+DETECTION_STEPS: Final = np.log(np.array([1.5, 3.5, 8.0, 20.0, 50.0, 150.0, 600.0, 4000.0]))
 N_ITERATIONS: Final = 7
 N_ROUGH: Final = 3  # iterations before hopeless sets are dropped
 SET_SHARES_AT: Final = (0, 1, 3, 5)
 FIND_NEIGHBOURS_AT: Final = (0, 2, 3, 5)  # iterations that look up anew which lines lie beside each other
 LN_2PI: Final = float(np.log(2.0 * np.pi))
 FAR: Final = 1e6
+LEAST_NOISE: Final = 0.08  # of the usual noise: lists are rounded, and exact ones must not prove too much
+TILT_SPREAD: Final = 0.5  # of the trend of ln height over the list's range of 1/d²
 FEWEST_OWN_LINES: Final = 3.0  # that a phase should claim alone (tuned)
 COST_OF_LACKING: Final = 2.5  # nats for each line short of it, for a cell that may lie anywhere (tuned)
 COST_OF_LACKING_LISTED: Final = 1.0
 BARE_GHOST_HEIGHT: Final = 0.8
 GHOST_PRIOR_LINES: Final = 1.5  # weight of the usual frequency of ghosts, in lines
-GHOST_LIST_PRIOR: Final = -2.0  # ln chance that a list shows a kind of ghost throughout
+GHOST_LIST_PRIOR: Final = -1.0  # ln chance that a list shows a kind of ghost throughout
 N_SHIFT: Final = 3  # shift terms: zero, displacement, doublet
 
 
@@ -163,7 +165,7 @@ class _Fit:
         self.low = pool.ln_a_low[members]
         self.high = pool.ln_a_high[members]
         self.unlisted = pool.unlisted[members]
-        self.height_scale = pool.height_scale[members]
+        self.height_scale = pool.height_scale[members] * axis.height_factor
         self.ln_odds = pool.ln_odds[members].sum(axis=1)
         self.phi = phi.copy()
         self.u = ln_a.copy()
@@ -173,7 +175,9 @@ class _Fit:
         self.ln_share = np.full((self.n_sets, self.m), start)
         self.rate = np.full(self.n_sets, max(1.0, self.n / 4.0))
         self.use_heights = False
-        # of each kind of ghost (column = kind): the chance that its lines show, and ln height against the usual
+        self.tilt = np.zeros(self.n_sets)
+        # of each kind of ghost (column = kind): the chance that its lines show, and ln height against the
+        # usual
         self.activity = np.ones((self.n_sets, 4))
         self.ghost_height = np.zeros((self.n_sets, 4))
         for ghost in axis.ghosts:
@@ -190,6 +194,7 @@ class _Fit:
         part.ln_share = self.ln_share[rows]
         part.rate = self.rate[rows]
         part.use_heights = self.use_heights
+        part.tilt = self.tilt[rows]
         part.activity = self.activity[rows]
         part.ghost_height = self.ghost_height[rows]
         return part
@@ -269,10 +274,12 @@ class _Fit:
             self.height_scale.shape + (1,) * (height.ndim - 2)
         )
         ratio = np.clip(ln_share + height - self.floor, -40.0, 40.0)
-        return np.asarray(MOST_CERTAIN * frequency / (1.0 + np.exp(-slope * ratio)))
+        return np.asarray(self.axis.most_certain * frequency / (1.0 + np.exp(-slope * ratio)))
 
     def shown(self, kind: NDArray[np.integer]) -> tuple[FloatArray, FloatArray]:
-        """Return, for lines of some kinds (set first), the chance that the list shows them and their ln height."""
+        """Return, for lines of some kinds (set first), the chance that the list shows them and their ln
+        height.
+        """
         row = np.arange(self.n_sets).reshape((-1,) + (1,) * (kind.ndim - 1))
         return self.activity[row, kind], self.ghost_height[row, kind]
 
@@ -287,14 +294,14 @@ class _Fit:
             p = self.chance_seen(
                 self.ln_share[..., None], self.height + level[:, None, None], self.frequency * inside
             )
-            visible = (p * of_kind).sum(axis=(1, 2)) / MOST_CERTAIN
+            visible = (p * of_kind).sum(axis=(1, 2)) / self.axis.most_certain
             claims = np.where(self.near_kind == ghost.kind, self.claims, 0.0)
             seen = claims.sum(axis=(1, 2, 3))
             prior = GHOST_PRIOR_LINES
             share = (seen + prior * ghost.frequency) / (visible + prior)
             self.activity[:, ghost.kind] = np.clip(share, 0.01, 0.95)
             if self.axis.ln_intensity is not None:
-                gap = self.axis.ln_intensity[None, None, :, None] - self.ln_share[:, :, None, None]
+                gap = self.observed_heights() - self.ln_share[:, :, None, None]
                 gap = np.where(np.isfinite(self.near_height), gap - self.near_height, 0.0)
                 weight = 1.0 / HEIGHT_SPREAD[0] ** 2
                 total = (claims * gap).sum(axis=(1, 2, 3)) * weight
@@ -302,7 +309,9 @@ class _Fit:
                 self.ghost_height[:, ghost.kind] = np.clip(moved, -2.5, 2.5)
 
     def ghost_prior(self) -> FloatArray:
-        """Return the log prior density of the ghosts' activity (beta) and height (n_sets,), relative to none."""
+        """Return the log prior density of the ghosts' activity (beta) and height (n_sets,), relative to
+        none.
+        """
         value = np.zeros(self.n_sets)
         for ghost in self.axis.ghosts:
             base = np.clip(ghost.frequency, 0.01, 0.95)
@@ -369,9 +378,9 @@ class _Fit:
         """Return the density of the observed height under the claim over that under the background."""
         if self.axis.ln_intensity is None or not self.use_heights:
             return np.ones_like(height)
-        observed = self.axis.ln_intensity[None, None, :, None]
-        residual = observed - self.ln_share[:, :, None, None] - height
-        scale = np.where(plain, self.height_scale[:, :, None, None], 2.0)
+        residual = self.observed_heights() - self.ln_share[:, :, None, None] - height
+        # a ghost is as high as its parent's line, texture and all, times one ratio
+        scale = np.where(plain, self.height_scale[:, :, None, None], 1.0)
         return np.asarray(np.exp(log_height_density(residual / scale)) / scale * max(0.3 - self.floor, 1.0))
 
     def _one_to_one(self, claim: FloatArray, others: FloatArray) -> FloatArray:
@@ -391,8 +400,8 @@ class _Fit:
     ) -> FloatArray:
         """Return the further density where predicted lines of two members coincide.
 
-        One line with p = 1 - (1 - p1)(1 - p2) has r = r1 + r2 + r1 r2: this is the last term, for a line at the
-        centre of the two, weighted by their heights, and as high as both together.
+        One line with p = 1 - (1 - p1)(1 - p2) has r = r1 + r2 + r1 r2: this is the last term, for a line at
+        the centre of the two, weighted by their heights, and as high as both together.
         """
         extra = np.zeros((self.n_sets, self.n))
         if self.m < 2:
@@ -404,7 +413,7 @@ class _Fit:
 
         strongest, r, delta = of_best(claim), of_best(odds), of_best(self.delta)
         height = of_best(heights) + self.ln_share[:, :, None]
-        scatter = of_best(np.where(self.near_plain, self.height_scale[:, :, None, None], 2.0))
+        scatter = of_best(np.where(self.near_plain, self.height_scale[:, :, None, None], 1.0))
         width = sigma[:, 0, :, 0]
         for first in range(self.m):
             for second in range(first + 1, self.m):
@@ -418,7 +427,7 @@ class _Fit:
                 density, _ = self._position_density(middle, width)
                 if self.use_heights and self.axis.ln_intensity is not None:
                     scale = np.minimum(scatter[:, first], scatter[:, second])
-                    residual = (self.axis.ln_intensity - both) / scale
+                    residual = (self.observed_heights()[:, 0, :, 0] - both) / scale
                     density = (
                         density * np.exp(log_height_density(residual)) / scale * max(0.3 - self.floor, 1.0)
                     )
@@ -428,7 +437,9 @@ class _Fit:
     # -- updates ---------------------------------------------------------------------------------
 
     def normal_equations(self) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Return information matrix and right-hand side of a Gauss-Newton step, and the lines' part of the matrix."""
+        """Return information matrix and right-hand side of a Gauss-Newton step, and the lines' part of the
+        matrix.
+        """
         axis = self.axis
         weight = self.claims * self.inner / self.sigma2[:, None, :, None]
         weight = weight * np.where(self.near_plain, 1.0, 0.1)
@@ -439,7 +450,8 @@ class _Fit:
         pull = weight * self.delta
 
         def total(value: FloatArray) -> FloatArray:
-            return value.sum(axis=(2, 3))
+            summed: FloatArray = value.sum(axis=(2, 3))
+            return summed
 
         for i, first in enumerate(self.near_bases):
             weighted = weight * first
@@ -495,6 +507,7 @@ class _Fit:
         self.u += np.clip(change[:, N_SHIFT:], -3e-3, 3e-3)
         gradient, curvature = self.noise_terms(matrix, of_lines)
         self.ln_sigma -= np.clip(gradient / curvature, -0.7, 0.7)
+        self.ln_sigma = np.maximum(self.ln_sigma, np.log(LEAST_NOISE * self.axis.noise_center))
         self.rate = np.clip(self.background.sum(axis=1) + 0.3, BACKGROUND[0], None)
 
     def noise_terms(self, matrix: FloatArray, of_lines: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -515,15 +528,36 @@ class _Fit:
 
     def centre_shares(self) -> FloatArray:
         """Return each member's share from the heights of the lines that it claims (n_sets, m)."""
-        observed = self.axis.ln_intensity
-        assert observed is not None
         plain = np.where(self.near_plain, self.claims, 0.0)
         weight = plain.sum(axis=(2, 3))
-        gap = observed[None, None, :, None] - self.near_height
+        gap = self.observed_heights() - self.near_height
         gap = np.where(np.isfinite(gap), gap, 0.0)
         centre = (plain * gap).sum(axis=(2, 3)) / np.maximum(weight, 1e-9)
         centre = np.where(weight > 0.2, centre, self.floor)
         return np.clip(centre, self.floor - 0.5, 0.3)
+
+    def observed_heights(self) -> FloatArray:
+        """Return ln of the observed heights (n_sets, 1, n, 1), the list's tilt with 1/d² taken off."""
+        observed = self.axis.ln_intensity
+        assert observed is not None
+        return np.asarray(
+            observed[None, None, :, None]
+            - self.tilt[:, None, None, None] * self.axis.tilt[None, None, :, None]
+        )
+
+    def update_tilt(self) -> None:
+        """Learn the list's trend of heights with 1/d²: thermal motion, absorption and optics not known
+        here.
+        """
+        plain = np.where(self.near_plain & np.isfinite(self.near_height), self.claims, 0.0)
+        residual = self.observed_heights() - self.ln_share[:, :, None, None]
+        residual = np.where(plain > 0, residual - self.near_height, 0.0) / self.height_scale[:, :, None, None]
+        weight = plain / (1.0 + (residual / (2.0 * HEIGHT_SPREAD[0])) ** 2)
+        basis = self.axis.tilt[None, None, :, None]
+        change = (weight * residual * basis).sum(axis=(1, 2, 3))
+        strength = (weight * basis**2).sum(axis=(1, 2, 3)) + (HEIGHT_SPREAD[0] / TILT_SPREAD) ** 2
+        pulled = change - (HEIGHT_SPREAD[0] / TILT_SPREAD) ** 2 * self.tilt
+        self.tilt = np.clip(self.tilt + pulled / strength, -3.0 * TILT_SPREAD, 3.0 * TILT_SPREAD)
 
     def update_shares(self) -> None:
         """Set shares between iterations: from heights directly, else from what is seen and what is not."""
@@ -532,9 +566,12 @@ class _Fit:
         else:
             self.ln_share = self.centre_shares()
             self.use_heights = True
+            self.update_tilt()
 
     def set_shares(self) -> FloatArray:
-        """Choose each member's share; return the log of its integral relative to the chosen value (n_sets, m)."""
+        """Choose each member's share; return the log of its integral relative to the chosen value (n_sets,
+        m).
+        """
         axis = self.axis
         plain = np.where(self.near_plain, self.claims, 0.0)
         inside = self.in_range()
@@ -555,7 +592,7 @@ class _Fit:
         )
         gain = np.log(np.maximum(near_p / (1.0 - near_p), 1e-30))
         if axis.ln_intensity is not None:
-            residual = axis.ln_intensity[None, None, None, :, None] - steps[:, :, :, None, None]
+            residual = self.observed_heights()[:, :, None] - steps[:, :, :, None, None]
             residual = residual - self.near_height[:, :, None]
             residual = np.where(np.isfinite(residual), residual, 0.0)
             gain = gain + log_height_density(residual / self.height_scale[:, :, None, None, None])
@@ -598,7 +635,7 @@ class _Fit:
         prior += -0.5 * noise**2 - np.log(axis.noise_spread) - 0.5 * LN_2PI
         laplace = 0.5 * (N_SHIFT + 1 + self.m) * LN_2PI - 0.5 * log_det - 0.5 * np.log(noise_curvature)
         evidence = log_likelihood + prior + laplace + share_term.sum(axis=1) + self.ln_odds
-        evidence += self.ghost_prior()
+        evidence += self.ghost_prior() - 0.5 * (self.tilt / TILT_SPREAD) ** 2
         # a phase that claims hardly a line of its own only mends the heights of others
         each = np.where(self.near_plain, self.claims, 0.0).sum(axis=3)
         others = np.clip(self.claims.sum(axis=(1, 3))[:, None, :] - self.claims.sum(axis=3), 0.0, 1.0)
@@ -639,7 +676,8 @@ def evaluate(
 ) -> tuple[Evaluated, IntArray]:
     """Fit and integrate sets of equal size; return the fitted ones and their rows in `members`.
 
-    Sets whose rough evidence after a few iterations lies more than `margin` (nats) below the best are dropped.
+    Sets whose rough evidence after a few iterations lies more than `margin` (nats) below the best are
+    dropped.
 
     Parameters
     ----------

@@ -20,7 +20,7 @@ IntArray = NDArray[np.int64]
 
 MOST_LINES_OF_A_PHASE: Final = 64
 WEAKEST_LINE: Final = 4e-4  # of the strongest in range: below any measured list's floor
-GHOST_PARENT: Final = {KIND_ALPHA2: 0.04, KIND_BETA: 0.15, KIND_TUNGSTEN: 0.25}  # least height of a parent
+GHOST_PARENT: Final = {KIND_ALPHA2: 0.04, KIND_BETA: 0.05, KIND_TUNGSTEN: 0.1}  # least height of a parent
 EDGE_REACH: Final = 0.03  # ln a: how far a candidate may move; lines that could enter the range are kept
 
 

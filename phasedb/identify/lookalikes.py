@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Set
 from dataclasses import dataclass
 from typing import Final
 
@@ -18,6 +19,7 @@ FloatArray = NDArray[np.float64]
 
 AGREE: Final = 2.5  # standard uncertainties within which two predicted lines agree
 DRIFT_REACH: Final = 3.0  # drift scales within which an entry's a may be moved to agree
+BESIDE: Final = 0.006  # ln a: farther apart, a shift cannot make up for it
 VISIBLE: Final = 0.5
 UNSEEN: Final = 0.12  # a line less likely than this need not be there
 
@@ -32,28 +34,37 @@ class Reading:
     ln_share: float
 
 
-def find_look_alikes(axis: Axis, entries: Entries, index: int, reading: Reading) -> list[int]:
+def find_look_alikes(
+    axis: Axis, entries: Entries, index: int, reading: Reading, rivals: Set[int]
+) -> list[int]:
     """Return the entries (by index, in name order) that this reading of entry `index` cannot be told from.
 
     Both need the same visible lines at the same places, each entry's a being free within its drift, whatever
-    the lattice type.
+    the lattice type. The a of `rivals`, entries that explain this list about as well with another shift, was not
+    told from this one's: they need the same lines only.
     """
     found = []
-    for other in _near(entries, index, reading):
-        if other != index and _agree(axis, entries, index, other, reading):
+    near = {
+        *_near(entries, index, reading),
+        *(other for other in rivals if _is_beside(entries, other, reading)),
+    }
+    for other in sorted(near):
+        if other != index and _agree(axis, entries, index, other, reading, other in rivals):
             found.append(other)
     return found
 
 
 def _near(entries: Entries, index: int, reading: Reading) -> list[int]:
-    """Return entries that could agree: same lattice type and a, or a combination that shares a line sequence."""
+    """Return entries that could agree: same lattice type and a, or a combination that shares a line
+    sequence.
+    """
     lattice = LATTICE_TYPES[int(entries.lattice[index])]
     # F without odd lines is P(a/2), and I(a) shares its first lines with P(a/sqrt 2) (METHODS section 4)
     double, diagonal = float(np.log(2.0)), 0.5 * float(np.log(2.0))
     relatives: dict[LatticeType, list[tuple[LatticeType, float]]] = {
-        "F": [("F", 0.0), ("P", -double), ("I", -diagonal)],
-        "P": [("P", 0.0), ("F", double), ("I", diagonal)],
-        "I": [("I", 0.0), ("P", -diagonal), ("F", diagonal)],
+        "F": [("F", 0.0), ("P", 0.0), ("P", -double), ("I", -diagonal)],
+        "P": [("P", 0.0), ("I", 0.0), ("F", 0.0), ("F", double), ("I", diagonal)],
+        "I": [("I", 0.0), ("P", 0.0), ("P", -diagonal), ("F", diagonal)],
     }
     near = np.zeros(len(entries), dtype=bool)
     for name, offset in relatives[lattice]:
@@ -68,10 +79,16 @@ def _lines_at(axis: Axis, entries: Entries, index: int, ln_a: float) -> LineTabl
     return make_lines(axis, np.array([ln_a]), [entries.pattern(index)], with_ghosts=False)
 
 
-def _agree(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> bool:
+def _is_beside(entries: Entries, other: int, reading: Reading) -> bool:
+    return bool(abs(float(entries.ln_a[other]) - reading.ln_a) < BESIDE)
+
+
+def _agree(axis: Axis, entries: Entries, one: int, other: int, reading: Reading, is_rival: bool) -> bool:
     first = _lines_at(axis, entries, one, reading.ln_a)
-    best: float | None = None
-    for offset in (0.0, np.log(2.0), -np.log(2.0), 0.5 * np.log(2.0), -0.5 * np.log(2.0)):
+    best: float | None = reading.ln_a if is_rival and _is_beside(entries, other, reading) else None
+    for offset in (
+        () if best is not None else (0.0, np.log(2.0), -np.log(2.0), 0.5 * np.log(2.0), -0.5 * np.log(2.0))
+    ):
         target = reading.ln_a + offset
         drift = target - np.clip(target, entries.ln_a_low[other], entries.ln_a_high[other])
         if abs(drift) < DRIFT_REACH * entries.drift_scale[other] + AGREE * reading.ln_a_esd:

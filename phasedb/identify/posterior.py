@@ -13,8 +13,8 @@ from phasedb.identify.search import SAME_PLACE, Fitted, Key, Search
 KEPT: Final = 14.0  # nats below the best set within which sets count
 ALTERNATIVE: Final = 8.0  # nats below a set within which exchanged members count
 MOST_COMBINATIONS: Final = 4000
-# Share of unexplained lines at which an unlisted index is as often chance as cubic, and how fast it falls there
-# (tuned on lists of cubic phases taken out of the library and of non-cubic samples).
+# Share of unexplained lines at which an unlisted index is as often chance as cubic, and how fast it falls
+# there (tuned on lists of cubic phases taken out of the library and of non-cubic samples).
 TRUST_HALF: Final = 0.135
 TRUST_SLOPE: Final = 28.0
 
@@ -23,7 +23,8 @@ TRUST_SLOPE: Final = 28.0
 class WeightedSet:
     """A set with its posterior probability; `fit` is None for a combination that was not fitted itself.
 
-    `members` are the cubic phases that it holds (zones of other lattices are not among them). Where `only_looks_cubic`, the unlisted members of `fit` are
+    `members` are the cubic phases that it holds (zones of other lattices are not among them). Where
+    `only_looks_cubic`, the unlisted members of `fit` are
     taken for lines of something that is not cubic, and are not among `members`.
     """
 

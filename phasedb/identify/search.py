@@ -52,7 +52,7 @@ ISOTYPIC_WEIGHT: Final = 0.3  # of the patterns of an unlisted phase: those of e
 ISOTYPIC_REACH: Final = 0.05  # ln a
 MOST_ISOTYPIC: Final = 6
 ISOTYPIC_SCATTER: Final = 1.0
-PATTERN_SCATTER: Final = 1.8  # heights of an assumed line pattern scatter this much more (tuned)
+PATTERN_SCATTER: Final = 1.35  # heights of an assumed line pattern scatter this much more (tuned)
 SAME_PLACE: Final = 3e-3  # ln a: candidates of one lattice type closer than this claim the same lines
 FAR_BELOW_FIRST: Final = 60.0  # votes (nats) below the best proposal that are not worth an evaluation
 FAR_BELOW: Final = 20.0
@@ -149,7 +149,9 @@ class Candidates:
         return [self._of_entry[index] for index in wanted]
 
     def add_unlisted(self, lattice: int, ln_a: float, cell: Cell) -> list[int]:
-        """Return pool numbers of an unlisted phase at a place, one for each of the likeliest line patterns."""
+        """Return pool numbers of an unlisted phase at a place, one for each of the likeliest line
+        patterns.
+        """
         place = (lattice, round(ln_a / SAME_PLACE))
         if place not in self._of_place:
             name = LATTICE_TYPES[lattice]
@@ -241,7 +243,9 @@ class Candidates:
         return self.entry_of[member] == ZONE
 
     def _patterns(self, lattice: int, ln_a: float) -> list[Pattern]:
-        """Return the line patterns that an unlisted phase may have: archetypes, and those of entries nearby."""
+        """Return the line patterns that an unlisted phase may have: archetypes, and those of entries
+        nearby.
+        """
         name = LATTICE_TYPES[lattice]
         typical = archetypes(name, float(np.exp(ln_a)))
         near = self._isotypic(lattice, ln_a)
@@ -253,7 +257,9 @@ class Candidates:
         return [*patterns, *(Pattern(*self.entries.pattern(index), each, ISOTYPIC_SCATTER) for index in near)]
 
     def _isotypic(self, lattice: int, ln_a: float) -> list[int]:
-        """Return the nearest entry of each structure type near a place: a new phase is often like its neighbours."""
+        """Return the nearest entry of each structure type near a place: a new phase is often like its
+        neighbours.
+        """
         entries = self.entries
         gap = np.abs(entries.ln_a - ln_a)
         near = np.flatnonzero((entries.lattice == lattice) & (gap < ISOTYPIC_REACH))
@@ -636,8 +642,8 @@ class Search:
     def _with_informed_entries(self, level: list[Fitted]) -> list[Fitted]:
         """Give entries without a structure the line pattern of the unlisted phase fitted at their place.
 
-        Else such an entry could lose to a double of itself that knows its lines better. The entry is evaluated
-        anew, beside the double, and takes the place of its former reading.
+        Else such an entry could lose to a double of itself that knows its lines better. The entry is
+        evaluated anew, beside the double, and takes the place of its former reading.
         """
         entries, candidates = self.entries, self.candidates
         gone: dict[int, Start] = {}
