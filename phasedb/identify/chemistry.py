@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 
 from phasedb.identify.settings import MatchSettings
 
-OUTSIDE_WEIGHT = 2e-3  # of a phase for each element that the specimen is not known to hold
-EXCLUDED_WEIGHT = 1e-3  # of a phase with an element that is known to be absent
+OUTSIDE_WEIGHT = 5e-4  # of a phase for each element that the specimen is not known to hold
+EXCLUDED_WEIGHT = 1e-4  # of a phase with an element that is known to be absent
 
 
 def chemistry_weights(elements: Sequence[tuple[str, ...]], settings: MatchSettings) -> NDArray[np.float64]:
