@@ -16,6 +16,9 @@ SCALES_OF_LEVEL: Final = (1.0, 2.0**0.5)
 WIDTH_OF_SCALE: Final = 2.3548 / 5.0**0.5
 """Full width at half maximum of the Gaussian line that a filter of scale 1 answers best."""
 
+DIP: Final = 5.0
+"""How far, in units of noise, the answer sinks between two lines."""
+
 
 @dataclass(frozen=True, slots=True)
 class Answer:
@@ -128,19 +131,34 @@ def strongest_over_scales(answers: list[Answer], threshold: float) -> list[Candi
             abs(candidate.x - other.x) > 0.8 * max(other.fwhm, min(candidate.fwhm, 3.0 * other.fwhm))
             for other in kept
         ):
-            kept += _parts_of(candidate, seen) or [candidate]
+            kept += _parts_of(candidate, answers, seen) or [candidate]
     return kept
 
 
-def _parts_of(candidate: Candidate, seen: list[list[Candidate]]) -> list[Candidate]:
+def _parts_of(candidate: Candidate, answers: list[Answer], seen: list[list[Candidate]]) -> list[Candidate]:
     """Return the lines that a finer filter sees inside a candidate, or none if it is one line there too."""
     best: list[Candidate] = []
-    for found in seen:
+    for answer, found in zip(answers, seen, strict=True):
         inside = [
             one
             for one in found
             if one.fwhm < 0.75 * candidate.fwhm and abs(one.x - candidate.x) <= 0.8 * candidate.fwhm
         ]
-        if len(inside) >= 2 and (len(best) < 2 or inside[1].strength > best[1].strength):
-            best = inside
+        parts = _parted(inside, answer)
+        if len(parts) >= 2 and (len(best) < 2 or parts[1].strength > best[1].strength):
+            best = parts
     return best
+
+
+def _parted(found: list[Candidate], answer: Answer) -> list[Candidate]:
+    """Return the candidates that a real dip parts: noise ripples the top of a broad line. Strongest first."""
+    kept: list[Candidate] = []
+    for one in found:
+        for other in kept:
+            low, high = np.searchsorted(answer.x, sorted((one.x, other.x)))
+            valley = float(answer.value[low : high + 1].min())
+            if one.strength - valley < DIP:
+                break
+        else:
+            kept.append(one)
+    return kept
