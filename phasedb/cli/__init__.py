@@ -116,8 +116,18 @@ def cli(ctx: click.Context, store: str | None, by: str | None, debug: bool) -> N
     ctx.obj = Settings(store, by, debug)
 
 
+def harmless(text: str) -> str:
+    """Return text for a terminal: what could steer it or turn its lines around is written as an escape."""
+    if text.isascii() and text.isprintable():
+        return text
+    return "".join(
+        sign if sign.isprintable() or sign in "\n\t" else sign.encode("unicode_escape").decode("ascii")
+        for sign in text
+    )
+
+
 def _stop(text: str, code: int) -> NoReturn:
-    click.echo(f"error: {text}", err=True)
+    click.echo(f"error: {harmless(text)}", err=True)
     raise SystemExit(int(code))
 
 

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any, TypeVar
 
 import click
 
-from phasedb.cli import Settings
+from phasedb.cli import Settings, harmless
 
 if TYPE_CHECKING:
     from phasedb.library import Library
@@ -35,7 +35,7 @@ def print_json(document: dict[str, Any]) -> None:
 
 def note(text: str) -> None:
     """Print a remark on stderr: stdout carries only the result."""
-    click.echo(text, err=True)
+    click.echo(harmless(text), err=True)
 
 
 def examples(*lines: str) -> str:

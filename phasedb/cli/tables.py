@@ -8,6 +8,8 @@ import textwrap
 import unicodedata
 from collections.abc import Mapping, Sequence
 
+from phasedb.report.table import printable
+
 
 def text_width(text: str) -> int:
     """Return how many columns `text` takes on a terminal."""
@@ -34,7 +36,7 @@ def aligned(
     A table that is wider than the page has the columns in `shrink` wrapped at the widths given there: nothing
     is cut off.
     """
-    table = [list(heads), *(list(row) for row in rows)]
+    table = [list(heads), *([printable(cell) for cell in row] for row in rows)]
     widths = [max(text_width(row[i]) for row in table) for i in range(len(heads))]
     if sum(widths) + 2 * (len(widths) - 1) > page_width():
         for i, most in (shrink or {}).items():
@@ -61,7 +63,7 @@ def _wrapped(cell: str, width: int) -> list[str]:
 
 def labelled(pairs: Sequence[tuple[str, str]], *, indent: int = 0) -> list[str]:
     """Return ``label  text`` lines, the text wrapped under itself; pairs without text are left out."""
-    kept = [(label, text) for label, text in pairs if text]
+    kept = [(label, printable(" ".join(text.split()))) for label, text in pairs if text]
     column = max((text_width(label) for label, _ in kept), default=0) + 2
     lines = []
     for label, text in kept:

@@ -40,3 +40,11 @@ def disk(tmp_path: Path) -> Iterator[Callable[[int], Disk]]:
     yield make
     for folder in mounted:
         subprocess.run(["umount", "-l", folder], check=False, capture_output=True)
+
+
+@pytest.fixture
+def empty(tmp_path: Path) -> str:
+    """The path of a library without entries."""
+    path = tmp_path / "empty.sqlite"
+    assert run("init", "--empty", store=path).code == 0
+    return str(path)

@@ -1,4 +1,4 @@
-"""Readers of all that comes from outside, on good files broken at random: an answer or a clear error, in time."""
+"""Readers of all that comes from outside, on good files broken at random: an answer or a clear error."""
 
 from __future__ import annotations
 
