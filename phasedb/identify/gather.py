@@ -89,7 +89,13 @@ def gather(axis: Axis, source: PhaseSource, settings: MatchSettings, temperature
 def _places(axis: Axis, settings: MatchSettings, temperature_k: float | None) -> list[tuple[int, float]]:
     """Return (lattice, ln a) of the places where an unlisted phase would explain lines, best first."""
     nothing = prepare(PhaseTable.from_phases([]), settings, temperature_k)
-    search = Search(axis, nothing, settings.most_phases, places_of_each_lattice=PLACES_OF_EACH_LATTICE)
+    search = Search(
+        axis,
+        nothing,
+        settings.most_phases,
+        places_of_each_lattice=PLACES_OF_EACH_LATTICE,
+        zones_of_each_kind=0,
+    )
     search.run()
     fits = sorted(search.sets(), key=lambda fit: (-fit.log_evidence, fit.key))
     best_single = [fit for fit in fits if len(fit.members) == 1][:20]
