@@ -52,7 +52,7 @@ def export(
     kind = kind_of(str(path))
     if with_history and kind != "json":
         raise InputError("only JSON holds the history", where=str(path), hint="export to a .json file")
-    if Path(library.place).exists() and path.exists() and path.samefile(library.place):
+    if _is_store(path, library.place):
         raise InputError("this is the store itself", where=str(path), hint="choose another file")
     notes: list[str] = []
     with library.reading() as connection:
@@ -69,6 +69,13 @@ def export(
         write_whole(path, pieces)
         rows = library.history_count if with_history else 0
     return Exported(len(ids), rows, tuple(notes))
+
+
+def _is_store(path: Path, place: str) -> bool:
+    try:
+        return path.samefile(place)
+    except (OSError, ValueError):  # one of them is not there, or the store is on a server
+        return False
 
 
 def _order(connection: Connection) -> tuple[list[int], dict[str, str]]:
