@@ -40,16 +40,29 @@ def find_look_alikes(
     """Return the entries (by index, in name order) that this reading of entry `index` cannot be told from.
 
     Both need the same visible lines at the same places, each entry's a being free within its drift, whatever
-    the lattice type. The a of `rivals`, entries that explain this list about as well with another shift, was not
-    told from this one's: they need the same lines only.
+    the lattice type. The a of `rivals`, entries that explain this list about as well with another shift, was
+    not told from this one's: they need the same lines only.
     """
-    found = []
     near = {
         *_near(entries, index, reading),
         *(other for other in rivals if _is_beside(entries, other, reading)),
     }
-    for other in sorted(near):
-        if other != index and _agree(axis, entries, index, other, reading, other in rivals):
+    places = {
+        other: place
+        for other in sorted(near)
+        if other != index and (place := _place_of(entries, other, reading, other in rivals)) is not None
+    }
+    if not places:
+        return []
+    first = make_lines(axis, np.array([reading.ln_a]), [entries.pattern(index)], with_ghosts=False)
+    others = make_lines(
+        axis, np.array(list(places.values())), [entries.pattern(other) for other in places], with_ghosts=False
+    )
+    own = _Seen(axis, first, 0, reading.ln_a, reading)
+    found = []
+    for row, (other, place) in enumerate(places.items()):
+        seen = _Seen(axis, others, row, place, reading)
+        if own.is_covered_by(seen) and seen.is_covered_by(own):
             found.append(other)
     return found
 
@@ -83,44 +96,39 @@ def _is_beside(entries: Entries, other: int, reading: Reading) -> bool:
     return bool(abs(float(entries.ln_a[other]) - reading.ln_a) < BESIDE)
 
 
-def _agree(axis: Axis, entries: Entries, one: int, other: int, reading: Reading, is_rival: bool) -> bool:
-    first = _lines_at(axis, entries, one, reading.ln_a)
-    best: float | None = reading.ln_a if is_rival and _is_beside(entries, other, reading) else None
-    for offset in (
-        () if best is not None else (0.0, np.log(2.0), -np.log(2.0), 0.5 * np.log(2.0), -0.5 * np.log(2.0))
-    ):
-        target = reading.ln_a + offset
-        drift = target - np.clip(target, entries.ln_a_low[other], entries.ln_a_high[other])
-        if abs(drift) < DRIFT_REACH * entries.drift_scale[other] + AGREE * reading.ln_a_esd:
-            best = float(target)
-            break
-    if best is None:
-        return False
-    second = _lines_at(axis, entries, other, best)
-    return _covers(axis, first, reading.ln_a, second, best, reading) and _covers(
-        axis, second, best, first, reading.ln_a, reading
-    )
+def _place_of(entries: Entries, other: int, reading: Reading, is_rival: bool) -> float | None:
+    """Return ln a at which another entry would have the lines of a reading; None if its drift forbids it."""
+    if is_rival and _is_beside(entries, other, reading):
+        return reading.ln_a
+    reach = DRIFT_REACH * entries.drift_scale[other] + AGREE * reading.ln_a_esd
+    for offset in (0.0, np.log(2.0), -np.log(2.0), 0.5 * np.log(2.0), -0.5 * np.log(2.0)):
+        target = reading.ln_a + float(offset)
+        if abs(target - np.clip(target, entries.ln_a_low[other], entries.ln_a_high[other])) < reach:
+            return target
+    return None
 
 
-def _covers(
-    axis: Axis, first: LineTable, ln_a: float, second: LineTable, other_ln_a: float, reading: Reading
-) -> bool:
-    """Return whether each line that `first` must show is one that `second` may show."""
-    x = axis.positions(first.half_ln_n[0], np.array(ln_a))
-    y = axis.positions(second.half_ln_n[0], np.array(other_ln_a))
-    inside = (x >= axis.low) & (x <= axis.high)
-    floor = ln_floor(axis)
+class _Seen:
+    """The lines of one entry at one place: those that must be seen, and those that may be."""
 
-    def chance(height: FloatArray) -> FloatArray:
-        return 1.0 / (1.0 + np.exp(np.clip(-DETECTION_SLOPE * (reading.ln_share + height - floor), -40, 40)))
+    def __init__(self, axis: Axis, lines: LineTable, row: int, ln_a: float, reading: Reading) -> None:
+        x = axis.positions(lines.half_ln_n[row], np.array(ln_a))
+        ratio = DETECTION_SLOPE * (reading.ln_share + lines.ln_height[row] - ln_floor(axis))
+        chance = 1.0 / (1.0 + np.exp(np.clip(-ratio, -40.0, 40.0)))
+        with np.errstate(invalid="ignore"):
+            inside = (x >= axis.low) & (x <= axis.high)
+        self.must = x[inside & (chance > VISIBLE)]
+        self.may = x[np.isfinite(x) & (chance > UNSEEN)]
+        self.tolerance = AGREE * reading.sigma + 0.5 * axis.resolution
 
-    must = inside & (chance(first.ln_height[0]) > VISIBLE)
-    may = np.isfinite(y) & (chance(second.ln_height[0]) > UNSEEN)
-    tolerance = AGREE * reading.sigma + 0.5 * axis.resolution
-    if not may.any():
-        return not must.any()
-    gap = np.abs(x[must][:, None] - y[may][None, :])
-    return bool((gap.min(axis=1, initial=np.inf) < tolerance).all())
+    def is_covered_by(self, other: _Seen) -> bool:
+        """Return whether each line that this entry must show is one that the other may show."""
+        if len(self.must) == 0:
+            return True
+        if len(other.may) == 0:
+            return False
+        gap = np.abs(self.must[:, None] - other.may[None, :])
+        return bool((gap.min(axis=1) < self.tolerance).all())
 
 
 def what_separates(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> list[str]:
