@@ -593,7 +593,7 @@ def shift_coverage(lists: int) -> tuple[float, float]:
 
 
 def test_shift_is_covered_on_a_few_lists() -> None:
-    covered, named = shift_coverage(24)
+    covered, named = shift_coverage(16)
     assert covered >= 0.85
     assert named >= 0.9
 

@@ -54,10 +54,10 @@ def study_one(task: tuple[str, str, int], *, with_rivals: bool) -> Row:
     set_name, kind, number = task
     case = make_case(set_name, kind, number)
     verdicts = [judge(case, starter_table(), phase) for phase in case.truth.phases]
-    start = time.perf_counter()
+    start = time.process_time()
     try:
         found = match(case.peaks, case.table, MatchSettings())
-        result = score(case, found, verdicts, time.perf_counter() - start)
+        result = score(case, found, verdicts, time.process_time() - start)
     except Exception:  # a fault of the matcher is a finding of the study, not its end
         result = ListScore.failed(case, traceback.format_exc(limit=-3))
     return Row(set_name, number, result, _rivals(case, verdicts) if with_rivals else {}, describe(case))

@@ -54,7 +54,7 @@ def by_set(rows: Sequence[Row]) -> dict[str, list[Row]]:
 
 def figures_text(rows: Sequence[Row]) -> str:
     """Return the main table: one row for each set, with 95 % bootstrap intervals over whole lists."""
-    heads = ["set", "lists", *(head for head, _, _ in COLUMNS), "shift within 2 esd (%)", "ms a list"]
+    heads = ["set", "lists", *(head for head, _, _ in COLUMNS), "shift within 2 esd (%)", "CPU ms a list"]
     lines = [_row(heads), _row(["---"] * len(heads))]
     for name, members in by_set(rows).items():
         scores = [row.score for row in members]
