@@ -8,7 +8,6 @@ alone.
 from __future__ import annotations
 
 import contextlib
-import json
 import os
 import re
 import shutil
@@ -20,6 +19,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import click
+from running import run
 
 from phasedb.cli import COMMANDS, cli
 
@@ -187,22 +187,13 @@ def documents(folder: Path) -> dict[str, tuple[str, dict[str, object]]]:
     """Run one command of each kind with ``--json``; return what it printed by schema, with the command."""
     lay_out(folder)
     _make_scan(folder / "made.xy")
-    variables = {**environment(folder), "PHASEDB_STORE": "lab.sqlite"}
-    runs = [line.split() for line in _SCHEMA_RUNS.strip().splitlines()]
     found: dict[str, tuple[str, dict[str, object]]] = {}
-    for words in runs:
-        person = "B. Second" if words[0] in _SECOND_PERSON else "A. First"
-        done = subprocess.run(
-            [sys.executable, "-m", "phasedb", "--by", person, *words, "--json"],
-            capture_output=True,
-            text=True,
-            cwd=folder,
-            env=variables,
-            check=False,
-        )
-        assert done.returncode == 0, (words, done.stderr)
-        document = json.loads(done.stdout)
-        found.setdefault(document["schema"], (next(word for word in words if word in COMMANDS), document))
+    with contextlib.chdir(folder):
+        for words in map(str.split, _SCHEMA_RUNS.strip().splitlines()):
+            person = "B. Second" if words[0] in _SECOND_PERSON else "A. First"
+            document = run(*words, "--json", store="lab.sqlite", by=person).json
+            command = next(word for word in words if word in COMMANDS)
+            found.setdefault(document["schema"], (command, document))
     return found
 
 
