@@ -1,4 +1,6 @@
-"""What must hold of every match: order, unit, rows and entries that match nothing do not change the answer."""
+"""What must hold of every match: order, unit, rows and entries that match nothing do not change the
+answer.
+"""
 
 from __future__ import annotations
 

@@ -10,7 +10,9 @@ from phasedb.identify.merit import merit_f, possible_lines
 
 
 def _n_of_a15(n_max: int) -> np.ndarray:
-    """Return the N that the A15 structure's space group P m -3 n allows, by a general crystallographic library."""
+    """Return the N that the A15 structure's space group P m -3 n allows, by a general crystallographic
+    library.
+    """
     operations = gemmi.SpaceGroup("P m -3 n").operations()
     return np.array(
         [
