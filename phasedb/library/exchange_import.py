@@ -10,11 +10,12 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any, Final, Literal, get_args
 
 from phasedb.errors import InputError
-from phasedb.library.exchange import Past, Plan, RowWarning, plan, planned_write, write_plan
+from phasedb.library.exchange import Past, Plan, RowWarning, plan
 from phasedb.library.exchange_history import ForeignHistory, carry, read_history
 from phasedb.library.exchange_known import uids_here
 from phasedb.library.exchange_measurements import bring_measurements, read_measurements
 from phasedb.library.exchange_rows import BadRow, Candidate
+from phasedb.library.exchange_writing import planned_write, write_plan
 from phasedb.library.people import now_utc
 
 if TYPE_CHECKING:

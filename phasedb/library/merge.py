@@ -10,10 +10,11 @@ from typing import TYPE_CHECKING
 from phasedb.errors import InputError, RuleRefusedError, StoreError
 from phasedb.library import connect
 from phasedb.library.audit import audit
-from phasedb.library.exchange import Plan, plan, planned_write, write_plan
+from phasedb.library.exchange import Plan, plan
 from phasedb.library.exchange_history import CARRIED_KIND, ForeignHistory, carry, history_rows
 from phasedb.library.exchange_measurements import bring_measurements, measurements_of
 from phasedb.library.exchange_rows import BadRow, Candidate, whole_content
+from phasedb.library.exchange_writing import planned_write, write_plan
 from phasedb.library.preparing import Prepared
 
 if TYPE_CHECKING:
