@@ -77,6 +77,7 @@ class Assembler:
         self.phase_count = phase_count
         self.fingerprint = fingerprint
         self.cautions = cautions
+        self.places: list[tuple[int, float]] = []  # of the unlisted phases, once they are found
         self.fitted_sets = [item for item in posterior.sets if item.fit is not None][:LEDGER_SETS]
 
     # -- whole -----------------------------------------------------------------------------------
@@ -318,6 +319,7 @@ class Assembler:
                 else:
                     places.append((lattice, ln_a, item.probability, item.fit, place))
         places.sort(key=lambda entry: (-entry[2], entry[0], entry[1]))
+        self.places = [(lattice, ln_a) for lattice, ln_a, *_ in places]
         shown = [self._place(*entry) for entry in places[:6] if entry[2] > 1e-4]
         best = shown[0] if shown else None
         return Unlisted(probability, best, tuple(shown[1:]))
@@ -461,9 +463,13 @@ class Assembler:
         if self.search.candidates.entry_of[member] >= 0:
             return self._name(member)
         lattice = LATTICE_TYPES[self.search.candidates.lattice_of[member]]
-        # the same unlisted phase has the same name in every set: a to the width of a place
-        a = float(np.exp(round(float(fit.ln_a[place]) / SAME_PLACE) * SAME_PLACE))
-        return f"unlisted {lattice} {a:.2f}"
+        # the same unlisted phase has the same name in every set: that of the best set with it
+        ln_a = float(fit.ln_a[place])
+        for known, at in self.places:
+            if LATTICE_TYPES[known] == lattice and abs(at - ln_a) < SAME_PLACE:
+                ln_a = at
+                break
+        return f"unlisted {lattice} {np.exp(ln_a):.2f}"
 
     def _ledger_line(
         self, number: int, claims: tuple[Claim, ...], unexplained: float, corrected_x: float
