@@ -9,6 +9,7 @@ same entries give the same bytes.
 from __future__ import annotations
 
 import json
+import math
 from collections.abc import Iterable, Iterator
 from functools import lru_cache
 from typing import Any, Final, NoReturn
@@ -75,6 +76,14 @@ def parse_document(text: str, file: str) -> dict[str, Any]:
     def refuse(word: str) -> NoReturn:
         raise InputError(f"read {word}, expected a finite number", where=file, hint="JSON has no such number")
 
+    def number(text: str) -> float:
+        value = float(text)
+        if not math.isfinite(value):
+            raise InputError(
+                f"read {text[:40]}, expected a smaller number", where=file, hint="correct the file"
+            )
+        return value
+
     def members(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
         found = dict(pairs)
         if len(found) != len(pairs):
@@ -83,7 +92,7 @@ def parse_document(text: str, file: str) -> dict[str, Any]:
         return found
 
     try:
-        document = json.loads(text, parse_constant=refuse, object_pairs_hook=members)
+        document = json.loads(text, parse_constant=refuse, parse_float=number, object_pairs_hook=members)
     except json.JSONDecodeError as error:
         raise InputError(
             f"not valid JSON: {error.msg}", where=at(file, error.lineno, error.colno), hint="correct the file"

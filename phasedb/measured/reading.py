@@ -110,7 +110,7 @@ def _raw_lines(given: SourceText, overrides: ReadOptions) -> RawLines:
         from phasedb.measured.json_list import read_json_list
 
         return read_json_list(given.text, given.source)
-    if re.match(r"(\s*(#[^\n]*)?\n)*\s*data_", given.text, re.IGNORECASE):
+    if re.match(r"(?:[^\S\n]*(?:#[^\n]*)?\n)*[^\S\n]*data_", given.text, re.IGNORECASE):
         from phasedb.measured.cif_list import read_cif_list
 
         return read_cif_list(given.text, given.source, unit=overrides.unit)

@@ -82,7 +82,7 @@ def read_scan(path: str | Path, overrides: ReadOptions | None = None) -> Scan:
         With the place, for what is not a scan.
     """
     given = read_source(path)
-    if re.match(r"(\s*(#[^\n]*)?\n)*\s*data_", given.text, re.IGNORECASE):
+    if re.match(r"(?:[^\S\n]*(?:#[^\n]*)?\n)*[^\S\n]*data_", given.text, re.IGNORECASE):
         from phasedb.measured.cif_scan import read_cif_scan
 
         raw = read_cif_scan(given.text, given.source)

@@ -6,7 +6,7 @@ import random
 import signal
 import warnings
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import FrameType
 
@@ -212,6 +212,20 @@ def test_scans(tmp_path: Path, cases: int) -> None:
         assert len(read_scan(path, rng.choice((OPTIONS[0], OPTIONS[4])))) > 0
 
     fuzz(seeds, [*seeds, TEXT_PEAKS], cases // 2, path, read)
+
+
+def test_cases_that_were_found_once(tmp_path: Path, exports: dict[str, bytes]) -> None:
+    """Blank lines before data, which took a time exponential in their number; an endless number in a history."""
+    path = tmp_path / "case.txt"
+    for ending in (b"x", b"data_", b"28.4 100\n47.3 50\n"):
+        path.write_bytes(b" \n\t\n# c\n" * 5000 + ending)
+        for read in (lambda: read_peak_list(path, OPTIONS[4]), lambda: read_scan(path)):
+            with no_hang(), suppress(PhasedbError):
+                read()
+    path = tmp_path / "case.json"
+    path.write_bytes(exports["json"].replace(b'"a_angstrom":4.2417', b'"a_angstrom":1e400'))
+    with pytest.raises(PhasedbError, match="smaller number"):
+        parse_document(read_source(path).text, "case.json")
 
 
 @pytest.mark.parametrize(
