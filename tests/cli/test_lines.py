@@ -5,6 +5,8 @@ from __future__ import annotations
 import pytest
 from running import run
 
+from phasedb.crystal.intensity import D_MIN_ANGSTROM
+
 # NIST certificate of SRM 640d, two-theta of silicon for Cu K-alpha1 (a = 5.43123 Å); the library's silicon is
 # 5.43094 Å, which moves the last of these lines by 0.007 degrees
 SILICON = {3: 28.441, 8: 47.300, 11: 56.119, 16: 69.126, 19: 76.372, 24: 88.025}
@@ -47,7 +49,7 @@ def test_where_the_list_ends(starter_store):
     usual = run("lines", "copper", "--json", store=starter_store).json["lines"]
     assert usual[-1]["two_theta_deg"] <= 150.0
     hard = run("lines", "copper", "--radiation", "Ag", "--json", store=starter_store).json["lines"]
-    assert hard[-1]["d_angstrom"] >= 0.45
+    assert hard[-1]["d_angstrom"] >= D_MIN_ANGSTROM
 
 
 def test_an_entry_without_structure_has_open_intensities(store):
