@@ -42,7 +42,7 @@ def lines(
     """Print the ideal lines of an entry: d, 2theta, hkl, multiplicity, intensity.
 
     Intensities run from 0 to 100, for a powder without texture, on K-alpha1 where a doublet is named; they
-    are left open for an entry whose structure is not known. The list ends at d = 0.45 Å.
+    are left open for an entry whose structure is not known. The list ends at d = 0.36 Å.
     """
     from phasedb.crystal.line_list import TWO_THETA_MAX_DEG, ideal_lines
 
