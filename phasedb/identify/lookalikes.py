@@ -145,17 +145,17 @@ def what_separates(axis: Axis, entries: Entries, one: int, other: int, reading: 
         parts.append(f"{', '.join(only_other)} only in {table.name[second]}")
     if parts:
         texts.append("an element analysis: " + "; ".join(parts))
-    line = _separating_line(axis, entries, one, other)
+    line = _separating_line(axis, entries, one, other, reading)
     if line:
         texts.append(line)
     return texts
 
 
-def _separating_line(axis: Axis, entries: Entries, one: int, other: int) -> str | None:
+def _separating_line(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> str | None:
     """Return the line that best separates two entries at their stored a, up to 2theta = 150 degrees."""
     lattice = LATTICE_TYPES[int(entries.lattice[one])]
     if entries.lattice[one] != entries.lattice[other]:
-        return _extra_line(axis, entries, one, other)
+        return _extra_line(axis, entries, one, other, reading)
     gap = abs(float(entries.ln_a[one] - entries.ln_a[other]))
     n, strength = entries.pattern(one)
     half = 0.5 * np.log(n)
@@ -173,14 +173,17 @@ def _separating_line(axis: Axis, entries: Entries, one: int, other: int) -> str 
     return f"line {name} near d = {np.exp(-x[best]):.4f} Å, where the two lie {100 * gap:.2f} % apart"
 
 
-def _extra_line(axis: Axis, entries: Entries, one: int, other: int) -> str | None:
+def _extra_line(axis: Axis, entries: Entries, one: int, other: int, reading: Reading) -> str | None:
     """Return the strongest line that only one of two entries of different lattice types has."""
     best: tuple[float, str] | None = None
+    # both where they would have the lines of the reading: a small difference of a is not a line of its own
+    elsewhere = _place_of(entries, other, reading, True)
+    place_of = {one: reading.ln_a, other: float(entries.ln_a[other]) if elsewhere is None else elsewhere}
     for mine, yours in ((one, other), (other, one)):
-        lines = _lines_at(axis, entries, mine, float(entries.ln_a[mine]))
-        theirs = _lines_at(axis, entries, yours, float(entries.ln_a[yours]))
-        x = axis.positions(lines.half_ln_n[0], entries.ln_a[mine])
-        y = axis.positions(theirs.half_ln_n[0], entries.ln_a[yours])
+        lines = _lines_at(axis, entries, mine, place_of[mine])
+        theirs = _lines_at(axis, entries, yours, place_of[yours])
+        x = axis.positions(lines.half_ln_n[0], np.array(place_of[mine]))
+        y = axis.positions(theirs.half_ln_n[0], np.array(place_of[yours]))
         y = y[np.isfinite(y) & (theirs.ln_height[0] > np.log(2e-3))]
         for place, height, n, kind in zip(x, lines.ln_height[0], lines.n[0], lines.kind[0], strict=True):
             if not np.isfinite(place) or kind != KIND_LINE or not axis.low <= place <= axis.high:
