@@ -141,6 +141,40 @@ class LineTable:
     formula: str
 
 
+RIGHT = {
+    "calibration_ceo2_srm674_d": "cerium dioxide",
+    "calibration_si_codata2010_d": "silicon",
+    "handbook_of_mineralogy_altaite": "lead telluride",
+    "handbook_of_mineralogy_periclase": "magnesium oxide",
+    "handbook_of_mineralogy_platinum": "platinum",
+    "handbook_of_mineralogy_sylvite": "potassium chloride",
+    "library_lab6_d_3decimals": "lanthanum hexaboride",
+    "library_ni_d": "nickel",
+    "library_rounded_ceo2_2theta": "cerium dioxide",
+    "neutron_calc_cu": "copper",
+    "neutron_calc_na2ca3al2f14": "NAC line-profile standard",
+    "neutron_calc_uo2": "uranium dioxide",
+    "neutron_calc_y2o3": "yttrium oxide",
+    "nist_srm640d_peak_positions": "silicon",
+    "nist_srm640e_peak_positions": "silicon",
+    "pyfai_al": "aluminium",
+    "pyfai_au": "gold",
+    "pyfai_ceo2": "cerium dioxide",
+    "pyfai_lab6_srm660a": "lanthanum hexaboride",
+    "pyfai_lab6_srm660c": "lanthanum hexaboride",
+    "pyfai_ni": "nickel",
+    "pyfai_si_srm640": "silicon",
+    "pyfai_si_srm640a": "silicon",
+    "pyfai_si_srm640b": "silicon",
+    "pyfai_si_srm640c": "silicon",
+    "pyfai_si_srm640e": "silicon",
+    "worked_example_bcc_tungsten": "tungsten",
+    "worked_example_fcc_aluminium": "aluminium",
+    "worked_example_fcc_indexing": "copper",
+}
+"""The starter entry that each published table belongs to."""
+
+
 def published_tables() -> list[LineTable]:
     """Return the published tables of four lines or more, a wavelength only where the source prints one."""
     tables: dict[str, list[dict[str, str]]] = {}
