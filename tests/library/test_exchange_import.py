@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Callable, Iterator
+from contextlib import AbstractContextManager, contextmanager
 from pathlib import Path
 
 import pytest
@@ -164,13 +166,46 @@ def test_an_entry_changed_on_both_sides_is_a_bad_row(tmp_path: Path, starter: st
     run("init", "--empty", store=here)
     run("export", first, store=starter)
     run("import", first, store=here)
-    for store, remark in ((starter, "theirs"), (here, "ours")):
+    for store, remark in ((starter, "first"), (starter, "theirs"), (here, "ours")):
         run("revise", "gold", "--remarks", remark, store=store)
     run("export", first, store=starter)
     ran = run("import", first, store=here)
     assert ran.code == 2
-    assert "'gold' was changed here (version 2) and there (version 2)" in ran.err
+    assert "'gold' was changed here (version 2) and there (version 3)" in ran.err
     assert "remarks: ours -> theirs" in ran.err
+
+
+def test_a_write_between_planning_and_writing_is_not_overlooked(empty: str, tmp_path: Path) -> None:
+    """Planning is done before the store is locked; here somebody takes the name right after it."""
+    from phasedb.library.exchange_import import BadRowsError, GivenFile, import_files
+
+    table = f"{HEAD}iron,Fe,I,2.8665,\nnickel,Ni,F,3.5239,\n"
+    with Library.open(empty, by="Zoe", write=True) as library:
+        planned: list[str] = []
+        reading = library.reading
+
+        def read_then_lose() -> object:
+            if not planned:
+                planned.append("once")
+                return _after(reading(), lambda: add_iron(empty))
+            return reading()
+
+        library.reading = read_then_lose  # type: ignore[method-assign,assignment]
+        with pytest.raises(BadRowsError, match="'iron' is in the library with other values"):
+            import_files(library, [GivenFile("table.csv", table, "0" * 64, "csv")])
+    assert names(empty) == ["iron"]
+
+
+def add_iron(store: str) -> None:
+    with Library.open(store, by="Ann", write=True) as other:
+        other.add(Draft("iron", "Fe", "I", 2.87))
+
+
+@contextmanager
+def _after(block: AbstractContextManager[object], then: Callable[[], None]) -> Iterator[object]:
+    with block as value:
+        yield value
+    then()
 
 
 def test_what_cannot_be_read_is_said(empty: str, tmp_path: Path) -> None:
