@@ -24,7 +24,7 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 NOMINAL_NOISE_DEG: Final = 0.02
-"""Position noise of an ordinary laboratory list; METHODS' default, `common practice, no source`."""
+"""Position noise of an ordinary laboratory list; `common practice, no source`."""
 NOMINAL_NOISE_RELATIVE: Final = 6e-4
 NOMINAL_NOISE_CAMERA: Final = 3e-3
 SCALE_ESD_D_LIST: Final = 7e-4

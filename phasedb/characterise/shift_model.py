@@ -19,7 +19,7 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 DEFAULT_RADIUS_MM: Final = 200.0
-"""Goniometer radius where none is given (DESIGN section 5)."""
+"""Goniometer radius where none is given."""
 SHORTEST_X_RAY_ANGSTROM: Final = 0.2
 """Below it a wavelength is an electron's, whose common error is one of scale."""
 UNRESOLVED_BELOW_DEG: Final = 0.12

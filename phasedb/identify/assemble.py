@@ -37,7 +37,7 @@ from phasedb.measured.peaklist import PeakList
 
 FloatArray = NDArray[np.float64]
 
-REPORTED: Final = 0.01  # phases at least this probable are in the result (DESIGN section 8)
+REPORTED: Final = 0.01  # phases at least this probable are in the result
 FEWEST_REPORTED: Final = 5
 CLAIMED: Final = 0.5
 RIVAL: Final = 0.05  # of an entry's probability: entries above it were not told from it by their a

@@ -26,7 +26,7 @@ from phasedb.measured.peaklist import PeakList
 
 FloatArray = NDArray[np.float64]
 
-DEFAULT_RADIUS_MM = 200.0  # common practice, no source: DESIGN takes 200 mm where the list does not say
+DEFAULT_RADIUS_MM = 200.0  # common practice, no source: taken where the list does not say
 ELECTRON_BELOW_ANGSTROM = 0.2  # shorter wavelengths than any laboratory X-ray tube's K lines
 
 # Ghost lines: kind, how often a list shows them at all, height as a share of the parent's line.
@@ -81,7 +81,7 @@ class Axis:
     doublet_resolved : bool
         True where the wavelength is the mean, so that it is the resolved lines that are offset.
     most_certain : float
-        The chance above which no line is expected (DESIGN section 6); less for rings, which merge and fade.
+        The chance above which no line is expected; less for rings, which merge and fade.
     height_factor : float
         How much wider heights scatter than a powder's X-ray lines do: electrons say little by intensity.
     blocked : tuple of (low, high)
@@ -344,7 +344,7 @@ def _range_on_axis(peaks: PeakList, angle: bool) -> tuple[float, float]:
     return low, float(values.max())
 
 
-# Scales of the model, from METHODS and tuned on the tuning seeds of tests/study (never on the reporting
+# Scales of the model, tuned on the tuning seeds of tests/study (never on the reporting
 # seeds).
 NOISE_CENTER_DEG = 0.02
 NOISE_SPREAD = 0.9

@@ -19,9 +19,9 @@ from phasedb.identify.settings import MatchSettings
 FloatArray = NDArray[np.float64]
 
 ROOM_K: Final = 298.0
-EXPECTED_LISTED: Final = 1.5  # phases of the library expected in a sample (DESIGN section 6)
+EXPECTED_LISTED: Final = 1.5  # phases of the library expected in a sample
 MOST_LIKELY_PRIOR: Final = 0.35  # odds of one entry before the lines are seen, however sharp the chemistry
-# Student-t scales of ln a by drift class: what a real sample's a differs from the stored one by (METHODS 6).
+# Student-t scales of ln a by drift class: what a real sample's a differs from the stored one by.
 # ... and how far it may at most, beyond which the entry is not what the sample holds.
 LARGEST_DRIFT: Final = {"line compound": 0.004, "alloy": 0.009, "solid solution": 0.009}
 DRIFT_SCALE: Final = {"line compound": 4e-4, "alloy": 2.0e-3, "solid solution": 2.5e-3}

@@ -1,7 +1,7 @@
-"""Evidence of many sets of phases at once: the likelihood of DESIGN section 6, integrated by Laplace's
+"""Evidence of many sets of phases at once: a likelihood for line lists, integrated by Laplace's
 method.
 
-For each set the two shift terms, every member's ln a, its share and the list's noise scale are fitted
+For each set the three shift terms, every member's ln a, its share and the list's noise scale are fitted
 together (responsibility-weighted Gauss-Newton, which is the EM algorithm for this mixture), then integrated
 out: Gaussian widths from the information matrix for the continuous ones, a sum over values for share and
 background. All arrays carry the set first: (n_sets, n_members, n_observed, 4), 4 being the predicted

@@ -72,7 +72,7 @@ def _near(entries: Entries, index: int, reading: Reading) -> list[int]:
     sequence.
     """
     lattice = LATTICE_TYPES[int(entries.lattice[index])]
-    # F without odd lines is P(a/2), and I(a) shares its first lines with P(a/sqrt 2) (METHODS section 4)
+    # F without odd lines is P(a/2), and I(a) shares its first lines with P(a/sqrt 2)
     double, diagonal = float(np.log(2.0)), 0.5 * float(np.log(2.0))
     relatives: dict[LatticeType, list[tuple[LatticeType, float]]] = {
         "F": [("F", 0.0), ("P", 0.0), ("P", -double), ("I", -diagonal)],

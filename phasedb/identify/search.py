@@ -34,7 +34,7 @@ from phasedb.identify.zones import ZONES, zone_pattern
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-EXPECTED_UNLISTED: Final = 0.3  # cubic phases expected that the library lacks (DESIGN section 6)
+EXPECTED_UNLISTED: Final = 0.3  # cubic phases expected that the library lacks
 UNLISTED_LATTICE: Final = {"P": 0.27, "I": 0.23, "F": 0.50}  # roughly as in the starter library
 LN_A_SPAN: Final = float(np.log(A_LARGEST) - np.log(A_SMALLEST))
 

@@ -20,7 +20,7 @@ from phasedb.measured.merging import merge_close
 from phasedb.measured.peaklist import FloatArray, PeakList, PositionUnit
 
 MOST_LINES: Final = 2000
-"""A list with more lines is a scan (DESIGN section 5)."""
+"""A list with more lines is a scan."""
 RANGE_MARGIN: Final = 0.02
 """A range that was not given: the span of the lines, widened on each side by this share of it."""
 RANGE_REMARK: Final = "measured range not given"

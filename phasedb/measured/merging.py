@@ -10,7 +10,7 @@ from phasedb.measured.peaklist import FloatArray
 
 RESOLUTION_DEG: Final = 0.02
 RESOLUTION_RELATIVE: Final = 2e-4
-"""Closer lines are one line, where no width is given (DESIGN section 5)."""
+"""Closer lines are one line, where no width is given."""
 
 _Columns = tuple[
     FloatArray, FloatArray, FloatArray | None, FloatArray | None, FloatArray | None, FloatArray | None

@@ -26,7 +26,7 @@ def test_diamond_shows_only_its_own_lines(name):
 
 
 def test_zinc_blende_fills_the_absences_of_diamond_by_the_difference_of_its_atoms():
-    # GaAs 200 is 0.1 of 111 (31 and 33 electrons); ZnS 200 is near 9 (30 and 16), METHODS of the trade
+    # GaAs 200 is 0.1 of 111 (31 and 33 electrons); ZnS 200 is near 9 (30 and 16)
     assert 0.02 < intensities("GaAs")[4] < 0.3
     assert intensities("zinc sulfide (sphalerite)")[4] == pytest.approx(9.5, abs=2)
     assert 4 not in intensities("silicon")
@@ -50,7 +50,7 @@ def test_odd_lines_of_rock_salt_show_the_difference_of_the_ions():
     ],
 )
 def test_first_line_of_rock_salt_types(name, low, high):
-    # calculated 111 against 200 = 100: NaF 1.7, MgO 10, TiN 70, TiC 89 (independent calculation, METHODS)
+    # calculated 111 against 200 = 100: NaF 1.7, MgO 10, TiN 70, TiC 89 (independent calculation)
     found = intensities(name)
     assert low < 100 * found[3] / found[4] < high
 

@@ -23,7 +23,7 @@ from phasedb.report.stored import match_from_document
 
 MAKERS = [two_phase_match, d_only_match, unlisted_match, nothing_match, hostile_match, foreign_script_match]
 
-# DESIGN's list of the fields that other programs rely on, as dotted paths ([] for each element).
+# The fields that other programs rely on, as dotted paths ([] for each element).
 PROMISED = [
     "schema",
     "program_version",

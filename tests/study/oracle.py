@@ -23,7 +23,7 @@ LOOK_ALIKE_NATS = float(np.log(20.0))
 """An entry whose evidence is at most this far (natural log) below the true one's cannot be told from it."""
 
 RATIOS = (1.0, 2.0**0.5, 2.0**-0.5, 2.0, 0.5, 3.0**0.5, 3.0**-0.5, 1.5**0.5, 1.5**-0.5)
-"""Ratios of lattice constants at which two cells share most lines (METHODS, section on indexing)."""
+"""Ratios of lattice constants at which two cells share most lines (common practice, no source)."""
 
 MOST_DRIFT = 0.015
 

@@ -68,7 +68,7 @@ def test_positions_follow_the_stated_sample_and_shift() -> None:
 
 
 def test_displacement_moves_lines_as_the_design_says() -> None:
-    """0.1 mm at R = 200 mm: -0.055 degrees at 2theta = 30, -0.041 at 90 (METHODS, computed)."""
+    """0.1 mm at R = 200 mm: -0.055 degrees at 2theta = 30, -0.041 at 90 (computed)."""
     assert shift_deg(np.array([30.0, 90.0]), 0.0, 0.1, 200.0) == pytest.approx([-0.0553, -0.0405], abs=1e-4)
 
 
