@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import sys
+from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Final
 
 import click
 
@@ -13,6 +14,9 @@ from phasedb.cli.common import examples, json_option, note, open_library, print_
 if TYPE_CHECKING:
     from phasedb.library.exchange import Plan, RowWarning
     from phasedb.library.exchange_rows import BadRow
+
+
+_SHOWN_ON_A_TERMINAL: Final = 40
 
 
 def _watch() -> Callable[[str, int, int], None]:
@@ -31,6 +35,15 @@ def _watch() -> Callable[[str, int, int], None]:
             shown[what].__exit__(None, None, None)
 
     return watch
+
+
+def _list(what: str, rows: Sequence[RowWarning]) -> None:
+    """Print all warnings; on a terminal only the first, which is what a person can read."""
+    shown = rows[:_SHOWN_ON_A_TERMINAL] if sys.stderr.isatty() else rows
+    for row in shown:
+        note(f"{what}: {row}")
+    if len(rows) > len(shown):
+        note(f"and {len(rows) - len(shown)} more; send them to a file with 2> FILE, or use --json")
 
 
 def _bad_document(row: BadRow) -> dict[str, Any]:
@@ -82,8 +95,7 @@ def import_(ctx: click.Context, files: tuple[str, ...], skip_bad: bool, as_json:
     done = import_files(library, given, skip_bad=skip_bad, progress=_watch())
     for text in done.notes:
         note(f"note: {text}")
-    for warning in done.warnings:
-        note(f"warning: {warning}")
+    _list("warning", done.warnings)
     for row in done.left_out:
         note(f"left out: {row}")
     if as_json:
@@ -219,8 +231,7 @@ def merge(ctx: click.Context, other: str, dry_run: bool, keep_ours: bool, as_jso
 
 def _announce(plan: Plan, dry_run: bool) -> None:
     """List what a merge meets, before it writes."""
-    for warning in plan.warnings:
-        note(f"neighbour: {warning}")
+    _list("neighbour", plan.warnings)
     for text in plan.remarks:
         note(f"note: {text}")
     if dry_run:
