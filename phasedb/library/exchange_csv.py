@@ -10,6 +10,7 @@ import csv
 import io
 import re
 from collections.abc import Iterable, Iterator, Mapping
+from functools import partial
 from typing import Final
 
 from phasedb.crystal.quantity import LEAST_A_ANGSTROM, MOST_A_ANGSTROM
@@ -292,6 +293,11 @@ def _header(rows: Iterator[tuple[int, list[str] | str]], file: str, notes: list[
     return header
 
 
+def _stated_fields(content: Draft, *, stated: set[str]) -> dict[str, str]:
+    """Return what a content says in the columns that a row fills: an empty cell contradicts nothing."""
+    return {name: text for name, text in text_fields(content).items() if name in stated}
+
+
 def _candidate(fields: dict[str, str], file: str, row: int) -> Candidate | BadRow:
     standing = fields.get("standing", "").strip() or "draft"
     if standing not in ("draft", "checked", "withdrawn"):
@@ -310,12 +316,15 @@ def _candidate(fields: dict[str, str], file: str, row: int) -> Candidate | BadRo
     if isinstance(prepared, BadRow):
         return prepared
     withdrawn = standing == "withdrawn"
+    stated = {name for name, cell in fields.items() if cell.strip()}
+    if prepared.content.a_esd_angstrom is not None:
+        stated.add("a_esd_angstrom")
     return Candidate(
         file,
         row,
         prepared,
         entry=None,
-        project=text_fields,
+        project=partial(_stated_fields, stated=stated),
         withdrawn_reason=reason if withdrawn else "",
         replaced_by=fields.get("replaced_by", "").strip() if withdrawn else "",
     )

@@ -82,6 +82,18 @@ def test_other_values_under_a_known_name_are_a_bad_row(empty: str, table: Path) 
     assert "new" not in names(empty)
 
 
+def test_a_column_that_is_not_there_contradicts_nothing(starter: str, tmp_path: Path) -> None:
+    path = tmp_path / "few columns.csv"
+    with Library.open(starter) as library:
+        gold = library.get("gold").content
+    path.write_text(f"name,formula,lattice_type,a_angstrom,tags\ngold,Au,F,{gold.a_angstrom},\n")
+    assert run("import", path, "--json", store=starter).json["already_here"] == 1
+    path.write_text(f"name,formula,lattice_type,a_angstrom,tags\ngold,Au,F,{gold.a_angstrom},shiny\n")
+    ran = run("import", path, store=starter)
+    assert ran.code == 2
+    assert "tags: starter -> shiny" in ran.err
+
+
 def test_names_within_one_import(empty: str, table: Path, tmp_path: Path) -> None:
     other = tmp_path / "other.csv"
     other.write_text(f"{HEAD}iron,Fe,I,2.8665,\nIron,Fe,I,2.9,\n")
