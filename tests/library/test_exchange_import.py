@@ -65,7 +65,7 @@ def test_a_second_import_finds_everything_there(empty: str, table: Path) -> None
 
 def test_an_entry_revised_since_is_left_as_it_is(empty: str, table: Path) -> None:
     run("import", table, store=empty)
-    run("revise", "iron", "--remarks", "own", store=empty)
+    assert run("revise", "iron", "--a", "2.8670", store=empty).code == 0
     before = Path(empty).read_bytes()
     ran = run("import", table, "--json", store=empty).json
     assert (ran["already_here"], ran["here_in_a_later_state"]) == (1, 1)
