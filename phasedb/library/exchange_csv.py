@@ -9,8 +9,8 @@ from __future__ import annotations
 import csv
 import io
 import re
-from collections.abc import Iterable, Iterator, Mapping
-from functools import partial
+from collections.abc import Callable, Iterable, Iterator, Mapping
+from functools import lru_cache, partial
 from typing import Final
 
 from phasedb.crystal.quantity import LEAST_A_ANGSTROM, MOST_A_ANGSTROM
@@ -293,7 +293,13 @@ def _header(rows: Iterator[tuple[int, list[str] | str]], file: str, notes: list[
     return header
 
 
-def _stated_fields(content: Draft, *, stated: set[str]) -> dict[str, str]:
+@lru_cache(maxsize=1000)
+def _projection(stated: frozenset[str]) -> Callable[[Draft], dict[str, str]]:
+    """Return the projection that all rows share which fill the same columns."""
+    return partial(_stated_fields, stated=stated)
+
+
+def _stated_fields(content: Draft, *, stated: frozenset[str]) -> dict[str, str]:
     """Return what a content says in the columns that a row fills: an empty cell contradicts nothing."""
     return {name: text for name, text in text_fields(content).items() if name in stated}
 
@@ -324,7 +330,7 @@ def _candidate(fields: dict[str, str], file: str, row: int) -> Candidate | BadRo
         row,
         prepared,
         entry=None,
-        project=partial(_stated_fields, stated=stated),
+        project=_projection(frozenset(stated)),
         withdrawn_reason=reason if withdrawn else "",
         replaced_by=fields.get("replaced_by", "").strip() if withdrawn else "",
     )
