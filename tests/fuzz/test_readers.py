@@ -215,7 +215,7 @@ def test_scans(tmp_path: Path, cases: int) -> None:
 
 
 def test_cases_that_were_found_once(tmp_path: Path, exports: dict[str, bytes]) -> None:
-    """Blank lines before data, which took a time exponential in their number; an endless number in a history."""
+    """Blank lines before data cost a time exponential in their number; an endless number in a history."""
     path = tmp_path / "case.txt"
     for ending in (b"x", b"data_", b"28.4 100\n47.3 50\n"):
         path.write_bytes(b" \n\t\n# c\n" * 5000 + ending)
