@@ -27,7 +27,7 @@ def peaks(tmp_path: Path) -> Path:
 
 def table_of(rows: int, path: Path) -> Path:
     lines = ["name,formula,lattice_type,a_angstrom,remarks"]
-    lines += [f"row {n},Fe,I,{2.5 + n / 1e4:.4f},{'made up ' * 20}" for n in range(rows)]
+    lines += [f"row {n},Fe,I,{2.5 + n / 1e4:.4f},{'made up ' * 120}" for n in range(rows)]
     path.write_text("\n".join(lines))
     return path
 
@@ -54,7 +54,7 @@ def test_writes_that_find_the_disk_full(
     before = store.read_bytes()
     other = tmp_path / "other.sqlite"
     run("init", "--empty", store=other)
-    table = table_of(5000, tmp_path / "table.csv")
+    table = table_of(1500, tmp_path / "table.csv")
     assert run("import", table, store=other).code == 0
 
     refused(run("import", table, store=store), "no space is left", "nothing was changed")
