@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 import shutil
 import sqlite3
+import subprocess
+import sys
 from collections.abc import Callable
 from pathlib import Path
 
@@ -88,6 +90,28 @@ def test_writes_that_find_the_disk_full(
     small.free()
     assert whole(store)
     assert run("match", peaks, "--save", store=store).code == 0
+    assert whole(store)
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="there is no limit on file sizes here")
+def test_a_limit_on_file_sizes(starter_once: Path, tmp_path: Path) -> None:
+    """The same without mounting anything: no file may grow beyond what the store has."""
+    store = tmp_path / "lab.sqlite"
+    shutil.copyfile(starter_once, store)
+    before = store.read_bytes()
+    code = (
+        "import resource, signal, sys\n"
+        "signal.signal(signal.SIGXFSZ, signal.SIG_IGN)\n"
+        f"resource.setrlimit(resource.RLIMIT_FSIZE, ({len(before) + 4096},) * 2)\n"
+        "from phasedb.cli import main\n"
+        "main(sys.argv[1:])\n"
+    )
+    words = ("--store", store, "import", table_of(500, tmp_path / "table.csv"))
+    done = subprocess.run(
+        [sys.executable, "-B", "-c", code, *map(str, words)], capture_output=True, text=True, check=False
+    )
+    refused(Ran(done.returncode, done.stdout, done.stderr))
+    assert store.read_bytes() == before
     assert whole(store)
 
 
