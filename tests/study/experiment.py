@@ -13,6 +13,7 @@ from phasedb.crystal.radiation import (
     radiation_from_name,
     radiation_from_wavelength,
 )
+from study.physics import FloatArray, doublet_position, two_theta, width_deg
 
 RANGES = {
     "Cu": ((20, 80), (20, 100), (10, 90), (30, 120), (15, 140), (25, 90), (10, 70), (20, 130)),
@@ -75,6 +76,20 @@ class Experiment:
     @property
     def physical_alpha1(self) -> float:
         return self.emission.alpha1
+
+    def maxima(self, d_angstrom: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Return the main maximum and the K-alpha2 maximum of lines d (degrees 2theta), how resolved.
+
+        Centroids lie at the weighted mean of the doublet, maxima where the width puts them.
+        """
+        first = two_theta(d_angstrom, self.emission.alpha1)
+        if self.monochromatic:
+            return first, np.full_like(first, np.nan), np.zeros_like(first)
+        width = width_deg(first, self.fwhm_deg, self.size_deg)
+        main, second, resolved = doublet_position(d_angstrom, self.emission, width)
+        if self.centroids:
+            return (2.0 * first + second) / 3.0, second, np.zeros_like(first)
+        return main, second, resolved
 
     def draw_texture(self, rng: np.random.Generator) -> tuple[tuple[int, int, int], float]:
         """Return axis and March-Dollase r of one phase; r = 1 is a random powder."""

@@ -84,7 +84,7 @@ def _rivals(case: Case, verdicts: Sequence) -> dict[str, RivalScore]:
 
 def describe(case: Case) -> str:
     """Return the truth of a list on one line."""
-    truth = case.truth
+    truth, setting = case.truth, case.truth.setting
     phases = "; ".join(
         f"{p.name} {p.lattice_type} {p.a_true:.4f} ({100 * p.drift:+.3f} % {p.drift_class}) w={p.share:.2f} "
         f"seen={p.lines_seen}{' REMOVED' if p.removed else ''}"
@@ -93,9 +93,9 @@ def describe(case: Case) -> str:
     radiation = case.peaks.radiation.name if case.peaks.radiation else "none"
     return (
         f"[{phases or truth.note}] {radiation} {case.peaks.unit} n={len(case.peaks)} "
-        f"noise={truth.noise_deg:.3f} z={truth.zero_deg:+.3f} s={truth.displacement_mm:+.3f} "
-        f"floor={truth.floor:.3f} "
-        f"fwhm={truth.fwhm_deg:.2f}{' I' if case.peaks.intensity is not None else ''}"
+        f"noise={setting.noise_deg:.3f} z={setting.zero_deg:+.3f} s={setting.displacement_mm:+.3f} "
+        f"floor={setting.floor:.3f} "
+        f"fwhm={setting.fwhm_deg:.2f}{' I' if case.peaks.intensity is not None else ''}"
         f"{' range?' if case.peaks.range_assumed else ''}"
     )
 

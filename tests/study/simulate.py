@@ -19,7 +19,6 @@ from phasedb.measured.peaklist import PeakList
 from study.experiment import Experiment
 from study.library import without
 from study.physics import (
-    doublet_position,
     lorentz_polarisation,
     march_dollase,
     shift_deg,
@@ -180,14 +179,7 @@ def finish_case(
     truth = Truth(
         seed=seed,
         phases=phases,
-        zero_deg=setting.zero_deg,
-        displacement_mm=setting.displacement_mm,
-        radius_mm=setting.radius_mm,
-        noise_deg=setting.noise_deg,
-        intensity_spread=setting.intensity_spread,
-        floor=setting.floor,
-        fwhm_deg=setting.fwhm_deg,
-        wavelength_angstrom=setting.declared.wavelength_angstrom,
+        setting=setting,
         owners=owners,
         shift_at_lines_deg=shift_deg(angle, setting.zero_deg, setting.displacement_mm, setting.radius_mm),
         note=note,
@@ -234,20 +226,15 @@ def add_diffracted(
     angle = two_theta(d, setting.physical_alpha1)
     keep = np.isfinite(angle)
     d, intensity, angle = d[keep], intensity[keep], angle[keep]
-    emission = setting.emission
-    if setting.monochromatic:
-        lines.add(angle, intensity, (name,))
-        return
-    width = width_deg(angle, setting.fwhm_deg, setting.size_deg)
-    main, second, resolved = doublet_position(d, emission, width)
-    if setting.centroids:
-        main, resolved = main + resolved * ((2.0 * angle + second) / 3.0 - main), np.zeros_like(resolved)
+    main, second, resolved = setting.maxima(d)
     lines.add(main, intensity, (name,))
+    if setting.monochromatic:
+        return
     if setting.lists_alpha2:
         split = (resolved > 0.8) & np.isfinite(second)
         lines.add(second[split], 0.48 * intensity[split], (f"{name}|k_alpha2",))
     for kind, wavelength, ratio in (
-        ("k_beta", emission.beta, setting.beta_ratio),
+        ("k_beta", setting.emission.beta, setting.beta_ratio),
         ("w_l_alpha", W_L_ALPHA1_ANGSTROM, setting.tungsten_ratio),
     ):
         if ratio > 0.0:

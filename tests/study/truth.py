@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from phasedb.crystal.phases import PhaseTable
 from phasedb.measured.peaklist import PeakList
+from study.experiment import Experiment
 
 FloatArray = NDArray[np.float64]
 
@@ -41,14 +42,7 @@ class Truth:
 
     seed: tuple[int, ...]
     phases: tuple[TruePhase, ...]
-    zero_deg: float
-    displacement_mm: float
-    radius_mm: float
-    noise_deg: float
-    intensity_spread: float
-    floor: float
-    fwhm_deg: float
-    wavelength_angstrom: float
+    setting: Experiment
     owners: tuple[tuple[str, ...], ...]
     shift_at_lines_deg: FloatArray
     note: str = ""
